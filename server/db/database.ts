@@ -1,0 +1,17 @@
+import knex, { type Knex } from 'knex'
+import pg from 'pg'
+
+// Dates stay text, as they are stored: a Date would put them into a time zone that they do not have.
+pg.types.setTypeParser(pg.types.builtins.DATE, (text) => text)
+// Counts fit into a double far beyond anything stored here.
+pg.types.setTypeParser(pg.types.builtins.INT8, Number)
+
+/** Opens a pool. Whoever opens it calls `destroy()`. */
+export function openDatabase(url: string, options: { max?: number } = {}): Knex {
+  return knex({
+    client: 'pg',
+    connection: { connectionString: url, application_name: 'coalhand' },
+    pool: { min: 2, max: options.max ?? 12, idleTimeoutMillis: 60_000 },
+    acquireConnectionTimeout: 5_000,
+  })
+}

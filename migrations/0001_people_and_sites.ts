@@ -50,6 +50,7 @@ export async function up(knex: Knex): Promise<void> {
       revoked_at timestamptz
     );
     create index refresh_tokens_family on refresh_tokens (family_id);
+    create index refresh_tokens_expired on refresh_tokens (expires_at);
 
     create table audit_entries (
       id bigint generated always as identity primary key,

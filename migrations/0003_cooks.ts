@@ -97,6 +97,8 @@ export async function up(knex: Knex): Promise<void> {
       recorded_at timestamptz not null,
       user_id integer references users,
       corrects_id uuid references events,
+      -- What the pit was set to before a change of it: taking the change back, and reading the night later, need it.
+      pit_set_before_c double precision check (pit_set_before_c is null or kind = 'pit_set'),
       check (num_nonnulls(piece_id, cooker_id) = 1),
       check (fact ->> 'kind' = kind)
     );
@@ -133,12 +135,20 @@ export async function up(knex: Knex): Promise<void> {
       made_at timestamptz not null,
       fan jsonb not null
     );
+
+    -- What the house's finished cooks taught the forecast; the newest row is used.
+    create table house_models (
+      id integer generated always as identity primary key,
+      made_at timestamptz not null,
+      cooks integer not null check (cooks >= 0),
+      model jsonb not null
+    );
   `)
 }
 
 export async function down(knex: Knex): Promise<void> {
   await knex.raw(`
-    drop table forecast_fans, forecasts, events, probe_placements, placements, pieces, services, recipes;
+    drop table house_models, forecast_fans, forecasts, events, probe_placements, placements, pieces, services, recipes;
     drop function events_are_append_only()
   `)
 }

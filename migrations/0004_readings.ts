@@ -22,7 +22,8 @@ export async function up(knex: Knex): Promise<void> {
       last double precision not null,
       last_at timestamptz not null,
       primary key (channel_id, minute)
-    );
+    -- Each row is changed many times within its minute: with room on the page that costs no new index entry.
+    ) with (fillfactor = 80);
 
     create table rejected_messages (
       id bigint generated always as identity primary key,

@@ -16,6 +16,8 @@ const Environment = z.object({
   DATABASE_URL: z.preprocess(unsetIfEmpty, z.url({ protocol: /^postgres(ql)?$/ }).optional()),
   DATA_DIR: z.preprocess(unsetIfEmpty, z.string().default('.data')),
   PUBLIC_URL: z.preprocess(unsetIfEmpty, z.url({ protocol: /^https?$/ }).optional()),
+  /** How many reverse proxies stand before the server. */
+  TRUST_PROXY: z.preprocess(unsetIfEmpty, z.coerce.number().int().min(0).max(10).default(0)),
   DEMO: onOff,
   DEMO_SEED: z.preprocess(unsetIfEmpty, z.coerce.number().int().min(1).default(1)),
   LOG_LEVEL: z.preprocess(unsetIfEmpty, z.enum(['fatal', 'error', 'warn', 'info', 'debug']).default('info')),
@@ -39,6 +41,7 @@ export type Config = Readonly<{
   databaseUrl: string | undefined
   dataDir: string
   publicUrl: string | undefined
+  trustProxy: number
   /** `on` and `off` as asked for; unset: on when the database is new and this is not production. */
   demo: 'on' | 'off' | undefined
   demoSeed: number
@@ -70,6 +73,7 @@ export function readConfig(environment: NodeJS.ProcessEnv = process.env): Config
     databaseUrl: settings.DATABASE_URL,
     dataDir,
     publicUrl: settings.PUBLIC_URL,
+    trustProxy: settings.TRUST_PROXY,
     demo: settings.DEMO,
     demoSeed: settings.DEMO_SEED,
     production: settings.NODE_ENV === 'production',

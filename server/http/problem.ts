@@ -26,8 +26,9 @@ export const notFound = (detail = 'There is nothing here, or you may not see it.
   new HttpProblem(404, 'Not found', detail)
 export const conflict = (detail: string, errors?: FieldError[]) =>
   new HttpProblem(409, 'That does not fit with what is there', detail, errors)
-export const staleVersion = (detail = 'Somebody changed this since you opened it. Look again, then change it.') =>
-  new HttpProblem(412, 'Changed meanwhile', detail)
+export const staleVersion = (
+  detail = 'Somebody changed this since you opened it. Look again, then change it.',
+) => new HttpProblem(412, 'Changed meanwhile', detail)
 export const versionRequired = () =>
   new HttpProblem(428, 'Version missing', 'Name the version you saw in an If-Match header.')
 export const unprocessable = (detail: string, errors?: FieldError[]) =>

@@ -1,0 +1,91 @@
+import type { Knex } from 'knex'
+import type { Logger } from 'pino'
+import type { Clock } from '#shared/domain/clock.ts'
+import { createCookerService } from './features/cookers/service.ts'
+import { createDeviceBook } from './features/devices/device-book.ts'
+import { createDeviceStates } from './features/devices/device-states.ts'
+import { createDeviceService } from './features/devices/service.ts'
+import { createEventsService } from './features/events/service.ts'
+import { createForecastsService } from './features/forecasts/service.ts'
+import { createPiecesService } from './features/pieces/service.ts'
+import { createReadingService } from './features/readings/service.ts'
+import { createRecipesService } from './features/recipes/service.ts'
+import { createServicesService } from './features/services/service.ts'
+import { createSessionService } from './features/session/service.ts'
+import { createSiteService } from './features/sites/service.ts'
+import { createTonightReadModel } from './features/tonight/read-model.ts'
+import { createIngest } from './ingest/ingest.ts'
+import { createLiveBus } from './live/bus.ts'
+import { createTickets } from './live/tickets.ts'
+
+export interface ServiceDeps {
+  /** Migrated. */
+  db: Knex
+  /** A pool of the ingest's own, so that no page can take its connections. */
+  ingestDb: Knex
+  log: Logger
+  clock: Clock
+  /** Signs access tokens. */
+  tokenKey: string
+  /** bcrypt's cost; the usual one when left out. */
+  passwordCost?: number | undefined
+  /** Called when too many readings wait for the database, and again when there is room. */
+  onPressure: (on: boolean) => void
+}
+
+export type Services = ReturnType<typeof composeServices>
+
+/** Makes every feature's service and gives each the others that it needs. Nothing listens and no job runs yet. */
+export function composeServices({
+  db,
+  ingestDb,
+  log,
+  clock,
+  tokenKey,
+  passwordCost,
+  onPressure,
+}: ServiceDeps) {
+  const bus = createLiveBus()
+  const { publish } = bus
+  const common = { db, clock, publish }
+
+  const tickets = createTickets({ clock })
+  const sessions = createSessionService({ db, clock, tokenKey, passwordCost })
+  const sites = createSiteService({ db })
+
+  const deviceBook = createDeviceBook({ db, clock })
+  const deviceStates = createDeviceStates({ db, publish, log })
+  const devices = createDeviceService({ ...common, book: deviceBook })
+  const ingest = createIngest({
+    db: ingestDb,
+    clock,
+    channels: deviceBook,
+    live: bus,
+    onHeard: (deviceId, { atMs, ...heard }) => deviceStates.note(deviceId, { lastSeenAtMs: atMs, ...heard }),
+    onPressure,
+    log,
+  })
+  const readings = createReadingService({ db, clock, sensorsOf: devices.sensorsOf, ingest })
+
+  const cookers = createCookerService(common)
+  const recipes = createRecipesService({ db })
+  const forecasts = createForecastsService({ db, readings })
+  const pieces = createPiecesService({ ...common, recipes, latestForecasts: forecasts.latestOf })
+  const events = createEventsService({ ...common, pieces, cookers })
+  const services = createServicesService(common)
+  const tonight = createTonightReadModel({
+    db,
+    clock,
+    pieces,
+    services,
+    cookers,
+    devices,
+    readings,
+    forecasts,
+  })
+
+  return {
+    ...{ bus, tickets, sessions, sites, deviceBook, deviceStates, devices, ingest, readings },
+    ...{ cookers, recipes, forecasts, pieces, events, services, tonight },
+  }
+}

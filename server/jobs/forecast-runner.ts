@@ -1,0 +1,143 @@
+import type { Logger } from 'pino'
+import type { LiveChanges } from '#shared/contract/live.ts'
+import type { Clock } from '#shared/domain/clock.ts'
+import type { HouseModel } from '#shared/forecast/house-model.ts'
+import type { Forecast } from '#shared/forecast/types.ts'
+import type { CookRecord, CookSource, ForecastsService } from '../features/forecasts/service.ts'
+import type { ForecastPool } from './forecast-pool.ts'
+import { onCalendar } from './stored-forecast.ts'
+
+export interface RunnerDeps {
+  clock: Clock
+  log: Logger
+  cooks: Pick<CookSource, 'cooking' | 'recordOf' | 'assemble'>
+  forecasts: Pick<ForecastsService, 'keep' | 'latestOf'>
+  pool: Pick<ForecastPool, 'forecast'>
+  /** What the house's past cooks taught; null for the general model. */
+  house: () => HouseModel | null
+  /** Tells those who watch a site what changed there. */
+  publish: (siteSlug: string, changes: LiveChanges) => void
+}
+
+/** How the last round went. */
+export interface RunnerState {
+  /** When it ended, ms since 1970 UTC; null before the first. */
+  endedAt: number | null
+  pieces: number
+  failed: number
+  /** From reading the log to storing the answer, the last piece's, ms. */
+  lastRunMs: number | null
+}
+
+export type ForecastRunner = ReturnType<typeof createForecastRunner>
+
+/** Forecasts pieces and keeps what was said. A piece is never forecast twice at once. */
+export function createForecastRunner({ clock, log, cooks, forecasts, pool, house, publish }: RunnerDeps) {
+  const running = new Map<number, Promise<boolean>>()
+  const again = new Set<number>()
+  const state: RunnerState = { endedAt: null, pieces: 0, failed: 0, lastRunMs: null }
+
+  /** Forecasts a piece now; if that is being done already, once more after it. @returns whether it worked */
+  function run(pieceId: number): Promise<boolean> {
+    const present = running.get(pieceId)
+    if (present) {
+      again.add(pieceId)
+      return present
+    }
+    const done = repeat(pieceId).finally(() => running.delete(pieceId))
+    running.set(pieceId, done)
+    return done
+  }
+
+  async function repeat(pieceId: number): Promise<boolean> {
+    again.delete(pieceId)
+    const worked = await attempt(pieceId)
+    return again.has(pieceId) ? repeat(pieceId) : worked
+  }
+
+  async function attempt(pieceId: number): Promise<boolean> {
+    const begun = clock.now()
+    try {
+      await forecastPiece(pieceId)
+      state.lastRunMs = clock.now() - begun
+      return true
+    } catch (error) {
+      log.warn({ err: error, pieceId }, 'A piece could not be forecast; it is tried again within a minute')
+      return false
+    }
+  }
+
+  async function forecastPiece(pieceId: number): Promise<void> {
+    const record = await cooks.recordOf(pieceId)
+    if (!record) return
+    const madeAt = clock.now()
+    const answer = await answerFor(record, madeAt)
+    if (!answer) return
+    const { forecast, fan } = onCalendar(answer, { pieceId, onAt: record.onAt, madeAt })
+    const kept = await forecasts.keep({ ...forecast, model: modelName(house()) }, fan)
+    if (kept) publish(record.site, { forecasts: [kept] })
+  }
+
+  /** What there is to say of a piece; undefined when it has been said. */
+  async function answerFor(record: CookRecord, now: number): Promise<Forecast | undefined> {
+    if (record.pulledAt !== null) {
+      const [last] = await forecasts.latestOf([record.pieceId])
+      const isSaid = last?.pullReason === 'already-pulled' && Date.parse(last.madeAt) >= record.pulledAt
+      if (isSaid) return undefined
+      return pulled(record, now, last?.wrapReachedAt ?? null)
+    }
+    // A piece without a probe of its own goes by a sibling, or by the clock: there is nothing to fit.
+    if (record.core.length === 0) return withoutProbe(record, now)
+    return pool.forecast(await cooks.assemble(record, now))
+  }
+
+  return {
+    run,
+
+    /** One round over every piece that cooks, one after the other, so that a slow one delays nobody but forecasts. */
+    runAll: async (): Promise<void> => {
+      const pieces = await cooks.cooking()
+      let failed = 0
+      for (const pieceId of pieces) if (!(await run(pieceId))) failed += 1
+      Object.assign(state, { endedAt: clock.now(), pieces: pieces.length, failed })
+    },
+
+    state: (): Readonly<RunnerState> => state,
+
+    /** Resolves once nothing is being forecast. */
+    async idle(): Promise<void> {
+      await Promise.all(running.values())
+    },
+  }
+}
+
+/** Which model said it: its version, and from how many of the house's cooks it learned. */
+export function modelName(house: HouseModel | null): string {
+  return `state-1, ${house?.cooks ?? 0} cooks`
+}
+
+function pulled(record: CookRecord, now: number, wrapReachedAt: string | null): Forecast {
+  const said: Forecast = {
+    atS: (now - record.onAt) / 1000,
+    phase: 'done',
+    wrap: null,
+    pull: null,
+    pullReason: 'already-pulled',
+    fan: [],
+  }
+  return wrapReachedAt === null
+    ? { ...said, wrapReason: 'already-pulled' }
+    : { ...said, wrapReachedS: (Date.parse(wrapReachedAt) - record.onAt) / 1000 }
+}
+
+function withoutProbe(record: CookRecord, now: number): Forecast {
+  return {
+    atS: (now - record.onAt) / 1000,
+    phase: record.wraps.length > 0 ? 'wrapped' : 'rise',
+    wrap: null,
+    wrapReason: 'too-little-data',
+    pull: null,
+    pullReason: 'too-little-data',
+    fan: [],
+  }
+}

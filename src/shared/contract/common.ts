@@ -6,8 +6,9 @@ export const Instant = z.iso
   .meta({ id: 'Instant', example: '2026-12-01T04:35:00.000Z' })
 
 /** The number of a row. In a path it arrives as text. */
-export const Id = z.int().positive()
-export const PathId = z.coerce.number().int().positive()
+const maxId = 2 ** 31 - 1
+export const Id = z.int().positive().max(maxId)
+export const PathId = z.coerce.number().int().positive().max(maxId)
 
 export const Slug = z
   .string()

@@ -1,0 +1,20 @@
+export const errors = {
+  offline: 'No se alcanza el servidor. Revisa la red e inténtalo otra vez.',
+  'signed-out': 'Ya no tienes la sesión abierta.',
+  forbidden: 'Tu función en este local no lo permite.',
+  'not-found': 'No está, o no puedes verlo.',
+  conflict: 'No concuerda con lo que hay ahora.',
+  invalid: 'No se puede aceptar así.',
+  'too-many': 'Demasiados intentos. Espera un poco e inténtalo otra vez.',
+  server: 'El servidor tiene un problema. Lo que escribiste no se guardó.',
+  unreadable: 'No se entiende la respuesta del servidor. Carga la página otra vez.',
+  unknown: 'Algo falló en esta página. Cárgala otra vez.',
+  field: {
+    required: 'Falta este dato.',
+    tooSmall: 'Mínimo {minimum}.',
+    tooBig: 'Máximo {maximum}.',
+    tooLong: 'Máximo {maximum} caracteres.',
+    email: "Escribe el correo así: nombre{'@'}ejemplo.com.",
+    form: 'Revisa este dato.',
+  },
+}

@@ -1,0 +1,13 @@
+import { chart } from './chart.ts'
+import { cook } from './cook.ts'
+import { cookers } from './cookers.ts'
+import { devices } from './devices.ts'
+import { errors } from './errors.ts'
+import { format } from './format.ts'
+import { frame } from './frame.ts'
+import { pieces } from './pieces.ts'
+import { signIn } from './sign-in.ts'
+import { wall } from './wall.ts'
+import { words } from './words.ts'
+
+export const es = { chart, cook, cookers, devices, errors, format, frame, pieces, signIn, wall, words }

@@ -1,6 +1,6 @@
 import { Duplex } from 'node:stream'
-import { performance } from 'node:perf_hooks'
-import { createPacketScanner, isPublish, type ScanFault } from './packet-scanner.ts'
+import { createPacketScanner, isPublish, isUnacknowledged, type ScanFault } from './packet-scanner.ts'
+import { createTokenBucket, type TokenBucket } from './token-bucket.ts'
 
 export interface GateLimits {
   /** A larger packet is a fault, in bytes with its fixed header. */
@@ -35,9 +35,22 @@ export interface Gate {
   cut(): void
 }
 
+/** What the gates of a broker share. */
+export interface Together {
+  heldBytes: number
+  /** Limits PUBLISH at QoS 0 of all clients: whoever sends at QoS 1 is slowed by waiting for acknowledgements. */
+  unacknowledged: TokenBucket
+}
+
+/** Of a packet that is held, what its passing depends on. */
+const kind = { other: 0, publish: 1, unacknowledged: 2 } as const
+type Kind = (typeof kind)[keyof typeof kind]
+
 const pingResponse = Uint8Array.from([0xd0, 0])
 const pingRequestByte = 0xc0
 const maxUnreadBytes = 16 * 1024
+/** How long a client that was too quick waits, in ms. */
+const refillMs = 10
 
 /**
  * Stands between a socket and the broker. It stops at the fixed header of a packet that is too large, so that its
@@ -55,7 +68,7 @@ export function createGate(
     onClosed,
   }: {
     /** What all gates of a broker hold together. */
-    together: { heldBytes: number }
+    together: Together
     /** Whether nothing at all may be let through just now. */
     isPressed: () => boolean
     /** The stream cannot be read on; `chunk` is what was read last. The connection is cut afterwards. */
@@ -65,17 +78,17 @@ export function createGate(
 ): Gate {
   const scanner = createPacketScanner(limits.maxPacketBytes)
   const chunks: Buffer[] = []
-  /** Sizes of the complete packets in `chunks`, those of PUBLISH negative. */
+  /** Sizes and kinds of the complete packets in `chunks`; those before `first` have gone. */
   let sizes: number[] = []
-  let firstSize = 0
+  let kinds: Kind[] = []
+  let first = 0
   let heldBytes = 0
   let phase: 'new' | 'connecting' | 'open' = 'new'
   let wanted = false
   let inFlight = 0
   let inputEnded = false
   let silenceMs = 0
-  let tokens = limits.burst
-  let tokensAt = performance.now()
+  const rate = createTokenBucket(limits.packetsPerSecond, limits.burst)
   let refill: NodeJS.Timeout | undefined
 
   const stream = new Duplex({
@@ -97,7 +110,7 @@ export function createGate(
       together.heldBytes -= heldBytes
       heldBytes = 0
       chunks.length = 0
-      sizes.length = 0
+      forgetSizes()
       if (error) socket.destroy()
       else hangUp(socket)
       onClosed()
@@ -123,7 +136,8 @@ export function createGate(
         // A client that asks and asks and never reads gets no answer: nothing piles up for it here.
         if (socket.writableLength < maxUnreadBytes) socket.write(pingResponse)
       } else {
-        sizes.push(isPublish(firstByte) ? -bytes : bytes)
+        sizes.push(bytes)
+        kinds.push(kindOf(firstByte))
       }
       packetStart = end
     })
@@ -157,48 +171,48 @@ export function createGate(
     if (bytes > 0) {
       letThrough(bytes)
       if (socket.isPaused() && heldBytes < limits.minHeldBytes) socket.resume()
-    } else if (inputEnded && firstSize === sizes.length) {
+    } else if (inputEnded && first === sizes.length) {
       stream.push(null)
     }
   }
 
   /** How much of what is held may go on now: whole packets, within the client's rate and capacity. */
   function bytesAllowed(): number {
-    if (phase === 'connecting' || isPressed() || firstSize === sizes.length) return 0
+    if (phase === 'connecting' || isPressed() || first === sizes.length) return 0
     if (phase === 'new') {
       phase = 'connecting'
-      return Math.abs(sizes[firstSize++] ?? 0)
+      return sizes[first++] ?? 0
     }
-    refillTokens()
     let bytes = 0
-    while (firstSize < sizes.length && tokens >= 1) {
-      const size = sizes[firstSize] ?? 0
-      if (size < 0) {
-        if (inFlight >= limits.maxInFlight) break
-        inFlight++
-      }
-      tokens--
-      firstSize++
-      bytes += Math.abs(size)
-    }
-    if (firstSize === sizes.length) {
-      sizes = []
-      firstSize = 0
-    } else if (tokens < 1) {
-      refill ??= setTimeout(pumpAgain, Math.max(10, 1000 / limits.packetsPerSecond))
-    }
+    while (first < sizes.length && mayPass(kinds[first])) bytes += sizes[first++] ?? 0
+    if (first === sizes.length) forgetSizes()
     return bytes
   }
 
-  function pumpAgain(): void {
-    refill = undefined
-    pump()
+  function mayPass(which: Kind | undefined): boolean {
+    // Its end will call.
+    if (which !== kind.other && inFlight >= limits.maxInFlight) return false
+    if (!rate.take()) return tryAgainLater()
+    if (which === kind.unacknowledged && !together.unacknowledged.take()) {
+      rate.giveBack()
+      return tryAgainLater()
+    }
+    if (which !== kind.other) inFlight++
+    return true
   }
 
-  function refillTokens(): void {
-    const now = performance.now()
-    tokens = Math.min(limits.burst, tokens + ((now - tokensAt) / 1000) * limits.packetsPerSecond)
-    tokensAt = now
+  function tryAgainLater(): false {
+    refill ??= setTimeout(() => {
+      refill = undefined
+      pump()
+    }, refillMs)
+    return false
+  }
+
+  function forgetSizes(): void {
+    sizes = []
+    kinds = []
+    first = 0
   }
 
   function letThrough(bytes: number): void {
@@ -262,6 +276,11 @@ export function createGate(
     },
     cut,
   }
+}
+
+function kindOf(firstByte: number): Kind {
+  if (!isPublish(firstByte)) return kind.other
+  return isUnacknowledged(firstByte) ? kind.unacknowledged : kind.publish
 }
 
 /** Ends a connection once what was written has gone out, but waits for nobody. */

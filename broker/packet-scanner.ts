@@ -66,6 +66,11 @@ export function createPacketScanner(maxPacketBytes: number): PacketScanner {
   }
 }
 
+/** Whether a PUBLISH with this first byte has QoS 0: nobody waits for its acknowledgement. */
+export function isUnacknowledged(firstByte: number): boolean {
+  return (firstByte & 0b110) === 0
+}
+
 /** Whether a packet with this first byte is a PUBLISH. */
 export function isPublish(firstByte: number): boolean {
   return firstByte >> 4 === publishType

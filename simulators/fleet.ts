@@ -48,6 +48,7 @@ async function main(): Promise<void> {
   const api = createHouseApi({ baseUrl, account: crew, clock })
   const sites = [...new Set(devices.map(({ site }) => site))]
   const watch = createNightWatch({ api, sites, houseSeed, clock })
+  let misses = 0
   const worker = createCrewWorker({
     api,
     onDone: (action) => log.info({ action }, 'The crew did something'),
@@ -73,7 +74,7 @@ async function main(): Promise<void> {
     while (!stopping.signal.aborted) {
       await lookOnce()
       if (watch.house() !== undefined) return
-      await rest(LOOK_MS)
+      await rest(lookAgainMs())
     }
   }
 
@@ -90,16 +91,23 @@ async function main(): Promise<void> {
       await lookOnce()
       const house = watch.house()
       if (house !== undefined && crew.works) await workOnce(house)
-      await rest(LOOK_MS)
+      await rest(lookAgainMs())
     }
   }
 
   async function lookOnce(): Promise<void> {
     try {
       await watch.look()
+      misses = 0
     } catch (error) {
+      misses += 1
       log.warn({ reason: messageOf(error) }, 'The house cannot be asked just now')
     }
+  }
+
+  /** Soon; less often while nobody answers. */
+  function lookAgainMs(): number {
+    return LOOK_MS * 2 ** Math.min(misses, 4)
   }
 
   async function workOnce(house: NonNullable<ReturnType<typeof watch.house>>): Promise<void> {

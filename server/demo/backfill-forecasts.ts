@@ -1,10 +1,16 @@
 import type { Knex } from 'knex'
 import type { Logger } from 'pino'
 import { z } from 'zod'
-import { assembleCook, type CookRecord, type ForecastsService } from '../features/forecasts/service.ts'
+import type { Forecast } from '#shared/forecast/types.ts'
+import {
+  assembleCook,
+  type CookRecord,
+  type ForecastToStore,
+  type ForecastsService,
+} from '../features/forecasts/service.ts'
 import { createForecastPool, type ForecastPool } from '../jobs/forecast-pool.ts'
 import { modelName } from '../jobs/forecast-runner.ts'
-import { onCalendar } from '../jobs/stored-forecast.ts'
+import { afterPull, onCalendar } from '../jobs/stored-forecast.ts'
 
 export interface BackfillDeps {
   db: Knex
@@ -57,13 +63,18 @@ async function backfillPiece(
 ): Promise<void> {
   const until = Math.min(record.pulledAt ?? before, before)
   const lines = await forecasts.cooks.lines(record, until)
-  const made = []
+  const made: ForecastToStore[] = []
+  const keep = (forecast: Forecast, madeAt: number) => {
+    const said = onCalendar(forecast, { pieceId: record.pieceId, onAt: record.onAt, madeAt })
+    made.push({ ...said.forecast, model: modelName(null) })
+  }
   const first = Math.ceil((record.onAt + firstAfterMs) / quarterMs) * quarterMs
   for (let madeAt = first; madeAt < until; madeAt += quarterMs) {
     if (signal.aborted) return
-    const forecast = await pool.forecast(assembleCook(record, lines, madeAt), { withFan: false })
-    const said = onCalendar(forecast, { pieceId: record.pieceId, onAt: record.onAt, madeAt })
-    made.push({ ...said.forecast, model: modelName(null) })
+    keep(await pool.forecast(assembleCook(record, lines, madeAt), { withFan: false }), madeAt)
+  }
+  if (record.pulledAt !== null && record.pulledAt <= before) {
+    keep(afterPull(record, record.pulledAt, made.at(-1)?.wrapReachedAt ?? null), record.pulledAt)
   }
   await forecasts.keepPast(made)
 }

@@ -60,10 +60,10 @@ export async function openDemo(options: DemoOptions): Promise<Demo | undefined> 
   return {
     house: { name: demoHouseName, password, accounts: accounts() },
     goLive({ httpUrl, mqttUrl, forecasts }) {
-      const stopFleet = startFleet({ mqttUrl, httpUrl, seed: seeded.seed, password, deviceKey, log })
+      const fleet = startFleet({ mqttUrl, httpUrl, seed: seeded.seed, password, deviceKey, log })
       const stopBackfill = backfillForecasts({ db, log, forecasts, before: seeded.at })
       return async () => {
-        await Promise.all([stopFleet(), stopBackfill()])
+        await Promise.all([fleet.stop(), stopBackfill()])
       }
     },
   }

@@ -22,6 +22,12 @@ export interface FleetOptions {
   log: Logger
 }
 
+export interface Fleet {
+  /** The number of the process that runs now, or ran last. */
+  pid: () => number | undefined
+  stop: () => Promise<void>
+}
+
 /** How long a fleet that ended is waited for before the next is started, ms: longer each time it dies early. */
 const firstPauseMs = 1000
 const longestPauseMs = 60_000
@@ -34,9 +40,8 @@ const farewellMs = 3000
  * Starts the demo house's devices and crew as a process of their own, which reaches the server as real ones would:
  * through the broker and the API. Started again when it dies. Its credentials go through standard input, so that no
  * list of processes shows them; when this process dies, that closes and the fleet ends too.
- * @returns stop
  */
-export function startFleet(options: FleetOptions): () => Promise<void> {
+export function startFleet(options: FleetOptions): Fleet {
   const log = options.log.child({ part: 'fleet' })
   const ending = new AbortController()
   let child: ChildProcess | undefined
@@ -58,10 +63,13 @@ export function startFleet(options: FleetOptions): () => Promise<void> {
   }
   launch()
 
-  return async () => {
-    ending.abort()
-    clearTimeout(timer)
-    if (child) await end(child)
+  return {
+    pid: () => child?.pid,
+    async stop() {
+      ending.abort()
+      clearTimeout(timer)
+      if (child) await end(child)
+    },
   }
 }
 

@@ -126,7 +126,7 @@ export function createIngest(options: IngestOptions): Ingest {
   function enqueue(message: Received, decoded: Parameters<typeof createJob>[1]): Promise<Outcome> {
     if (stopping) return Promise.reject(new IngestUnavailable('The server is stopping.'))
     const { job, outcome } = createJob(message, decoded)
-    line.add(job)
+    line.add(job, message.acceptedAt)
     updatePressure()
     wake()
     return outcome
@@ -135,10 +135,10 @@ export function createIngest(options: IngestOptions): Ingest {
   /** Starts the next batch when it is due; while one is in flight, its end does. */
   function wake(): void {
     if (running) return
-    const oldest = line.oldest()
-    if (oldest === undefined) return
+    const since = line.waitingSince()
+    if (since === undefined) return
     const waitMs =
-      stopping || line.size().readings >= limits.maxRows ? 0 : oldest + limits.lingerMs - performance.now()
+      stopping || line.size().readings >= limits.maxRows ? 0 : since + limits.lingerMs - performance.now()
     if (waitMs <= 0) {
       clearTimeout(timer)
       timer = undefined

@@ -29,7 +29,10 @@ export interface ForecastPool {
 const forecastWithinMs = 10_000
 const learnWithinMs = 20 * 60_000
 
-export function createForecastPool(): ForecastPool {
+/** @param options.withinMs how long one forecast may take */
+export function createForecastPool({
+  withinMs = forecastWithinMs,
+}: { withinMs?: number } = {}): ForecastPool {
   // Forecasts and learning have a thread each: learning takes long, and a piece may not wait for it.
   let forecasts = threads(null)
   const lessons = threads(null)
@@ -45,7 +48,7 @@ export function createForecastPool(): ForecastPool {
     async forecast(cook, { withFan = true } = {}) {
       const answer = await forecasts.run(
         { kind: 'forecast', cook, withFan },
-        { signal: AbortSignal.timeout(forecastWithinMs) },
+        { signal: AbortSignal.timeout(withinMs) },
       )
       if (answer.kind !== 'forecast') throw new Error('The worker answered another question.')
       return answer.forecast

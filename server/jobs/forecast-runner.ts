@@ -5,12 +5,12 @@ import type { HouseModel } from '#shared/forecast/house-model.ts'
 import type { Forecast } from '#shared/forecast/types.ts'
 import type { CookRecord, CookSource, ForecastsService } from '../features/forecasts/service.ts'
 import type { ForecastPool } from './forecast-pool.ts'
-import { onCalendar } from './stored-forecast.ts'
+import { afterPull, onCalendar } from './stored-forecast.ts'
 
 export interface RunnerDeps {
   clock: Clock
   log: Logger
-  cooks: Pick<CookSource, 'cooking' | 'recordOf' | 'assemble'>
+  cooks: Pick<CookSource, 'toForecast' | 'recordOf' | 'assemble'>
   forecasts: Pick<ForecastsService, 'keep' | 'latestOf'>
   pool: Pick<ForecastPool, 'forecast'>
   /** What the house's past cooks taught; null for the general model. */
@@ -84,7 +84,7 @@ export function createForecastRunner({ clock, log, cooks, forecasts, pool, house
       const [last] = await forecasts.latestOf([record.pieceId])
       const isSaid = last?.pullReason === 'already-pulled' && Date.parse(last.madeAt) >= record.pulledAt
       if (isSaid) return undefined
-      return pulled(record, now, last?.wrapReachedAt ?? null)
+      return afterPull(record, now, last?.wrapReachedAt ?? null)
     }
     // A piece without a probe of its own goes by a sibling, or by the clock: there is nothing to fit.
     if (record.core.length === 0) return withoutProbe(record, now)
@@ -96,7 +96,7 @@ export function createForecastRunner({ clock, log, cooks, forecasts, pool, house
 
     /** One round over every piece that cooks, one after the other, so that a slow one delays nobody but forecasts. */
     runAll: async (): Promise<void> => {
-      const pieces = await cooks.cooking()
+      const pieces = await cooks.toForecast()
       let failed = 0
       for (const pieceId of pieces) if (!(await run(pieceId))) failed += 1
       Object.assign(state, { endedAt: clock.now(), pieces: pieces.length, failed })
@@ -114,20 +114,6 @@ export function createForecastRunner({ clock, log, cooks, forecasts, pool, house
 /** Which model said it: its version, and from how many of the house's cooks it learned. */
 export function modelName(house: HouseModel | null): string {
   return `state-1, ${house?.cooks ?? 0} cooks`
-}
-
-function pulled(record: CookRecord, now: number, wrapReachedAt: string | null): Forecast {
-  const said: Forecast = {
-    atS: (now - record.onAt) / 1000,
-    phase: 'done',
-    wrap: null,
-    pull: null,
-    pullReason: 'already-pulled',
-    fan: [],
-  }
-  return wrapReachedAt === null
-    ? { ...said, wrapReason: 'already-pulled' }
-    : { ...said, wrapReachedS: (Date.parse(wrapReachedAt) - record.onAt) / 1000 }
 }
 
 function withoutProbe(record: CookRecord, now: number): Forecast {

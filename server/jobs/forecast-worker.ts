@@ -1,3 +1,4 @@
+import { constants, platform, setPriority } from 'node:os'
 import { workerData } from 'piscina'
 import { z } from 'zod'
 import { readyHouse } from '#shared/forecast/answer.ts'
@@ -13,6 +14,9 @@ import { StoredHouse } from './stored-house.ts'
 /** The house's model, or null for the general one. */
 const { house } = z.object({ house: StoredHouse.nullable() }).parse(workerData)
 const ready = readyHouse(house ?? generalHouse)
+
+// Linux takes a priority for each thread: this one gives way to the one that takes readings.
+if (platform() === 'linux') setPriority(constants.priority.PRIORITY_BELOW_NORMAL)
 
 /** What runs off the main thread: the forecast of a piece, and learning from finished cooks. */
 export default function run(task: WorkerTask): WorkerAnswer {

@@ -32,3 +32,18 @@ export function onCalendar(
     fan: forecast.fan.map(({ atS, ...quantiles }) => ({ at: instant(atS), ...quantiles })),
   }
 }
+
+/** What is said last of a piece: it was pulled. Moments in ms since 1970 UTC, `wrapReachedAt` as it was last said. */
+export function afterPull({ onAt }: { onAt: number }, now: number, wrapReachedAt: string | null): Forecast {
+  const said: Forecast = {
+    atS: (now - onAt) / 1000,
+    phase: 'done',
+    wrap: null,
+    pull: null,
+    pullReason: 'already-pulled',
+    fan: [],
+  }
+  return wrapReachedAt === null
+    ? { ...said, wrapReason: 'already-pulled' }
+    : { ...said, wrapReachedS: (Date.parse(wrapReachedAt) - onAt) / 1000 }
+}

@@ -53,7 +53,7 @@ export function createDeviceFleet(options: {
         const heardMs = lastHeardMs(credentials)
         if (heardMs === undefined) continue
         const fromMs = Math.max(heardMs, nowMs - MEMORY_MS)
-        for (let atMs = Math.ceil((fromMs + 1) / 60_000) * 60_000; atMs < nowMs - 60_000; atMs += 60_000) {
+        for (let atMs = Math.ceil((fromMs + 1) / 60_000) * 60_000; atMs < nowMs - REPORT_MS; atMs += 60_000) {
           publisher.report({ atMs, values: house.deviceValues(credentials.site, credentials.device, atMs) })
         }
       }

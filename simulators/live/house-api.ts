@@ -50,7 +50,9 @@ export function createHouseApi(options: { baseUrl: string; account: Account; clo
 
   async function bearer(): Promise<string> {
     if (token !== undefined && token.untilMs > clock.now() + 30_000) return token.value
-    const answer = await request(sessionEndpoints.signIn, { body: { email: account.email, password: account.password } })
+    const answer = await request(sessionEndpoints.signIn, {
+      body: { email: account.email, password: account.password },
+    })
     const session = await read(sessionEndpoints.signIn, answer)
     token = { value: session.token, untilMs: clock.now() + session.expiresInS * 1000 }
     return token.value

@@ -29,16 +29,21 @@ const MOST_KEPT = 2160
 /** Keeps a device's reports until they are acknowledged, as a device with a little memory does. */
 export function createOutbox(): Outbox {
   let fresh: DeviceReport | undefined
-  let old: DeviceReport[] = []
+  /** By minute: one of each is enough of what is past. */
+  const old = new Map<number, DeviceReport>()
   let sent: DeviceReport[] | undefined
 
   const keep = (report: DeviceReport) => {
-    // One a minute is enough of what is past.
     const minute = Math.floor(report.atMs / 60_000)
-    if (old.some((other) => Math.floor(other.atMs / 60_000) === minute)) return
-    old.push(report)
-    old.sort((a, b) => a.atMs - b.atMs)
-    if (old.length > MOST_KEPT) old = old.slice(-MOST_KEPT)
+    if (!old.has(minute)) old.set(minute, report)
+    if (old.size > MOST_KEPT) old.delete(Math.min(...old.keys()))
+  }
+
+  const takeOldest = () => {
+    const minutes = [...old.keys()].sort((a, b) => a - b).slice(0, MOST_TOGETHER)
+    const reports = minutes.flatMap((minute) => old.get(minute) ?? [])
+    for (const minute of minutes) old.delete(minute)
+    return reports
   }
 
   return {
@@ -52,9 +57,8 @@ export function createOutbox(): Outbox {
       if (fresh !== undefined) {
         sent = [fresh]
         fresh = undefined
-      } else if (old.length > 0) {
-        sent = old.slice(0, MOST_TOGETHER)
-        old = old.slice(MOST_TOGETHER)
+      } else if (old.size > 0) {
+        sent = takeOldest()
       }
       return sent
     },
@@ -66,7 +70,7 @@ export function createOutbox(): Outbox {
       sent = undefined
     },
     get waiting() {
-      return old.length + (fresh === undefined ? 0 : 1) + (sent?.length ?? 0)
+      return old.size + (fresh === undefined ? 0 : 1) + (sent?.length ?? 0)
     },
   }
 }

@@ -1,10 +1,14 @@
 import { compare } from 'bcryptjs'
 import type { Knex } from 'knex'
+import { pino } from 'pino'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
 import { z } from 'zod'
-import { settableClock } from '#shared/domain/clock.ts'
+import { settableClock, systemClock } from '#shared/domain/clock.ts'
+import { composeServer } from '../../server/compose.ts'
 import { openDatabase } from '../../server/db/database.ts'
+import { backfillForecasts } from '../../server/demo/backfill-forecasts.ts'
 import { houseState, seedDemo, type DemoSeedOptions } from '../../server/demo/seed-demo.ts'
+import { startFleet } from '../../server/demo/start-fleet.ts'
 import { demoPeople, demoSites } from '../../simulators/demo/house.ts'
 import { freshDatabase, type FreshDatabase } from '../harness/postgres.ts'
 
@@ -15,7 +19,7 @@ interface Seeded {
   db: Knex
   options: DemoSeedOptions
 }
-async function openHouse(): Promise<Seeded> {
+async function openHouse(pastCount = 40): Promise<Seeded> {
   const database = await freshDatabase()
   const db = openDatabase(database.url, { max: 3 })
   const options = {
@@ -26,7 +30,7 @@ async function openHouse(): Promise<Seeded> {
     deviceKey: 'a key for tests',
     log: () => undefined,
     passwordCost: 4,
-    pastCount: 40,
+    pastCount,
   }
   return { database, db, options }
 }
@@ -157,7 +161,7 @@ describe('the demo house', () => {
       await other.db.destroy()
       await other.database.drop()
     }
-  })
+  }, 60_000)
 
   it('takes a new password and new device secrets when those beside it were lost', async () => {
     await seedDemo({ ...house.options, password: 'another one', deviceKey: 'another key' })
@@ -169,7 +173,7 @@ describe('the demo house', () => {
 })
 
 it('somebody’s own house is left alone', async () => {
-  const own = await openHouse()
+  const own = await openHouse(0)
   try {
     await own.db('sites').insert({ slug: 'own', name: 'Own', time_zone: 'UTC' })
     expect(await houseState(own.db)).toBe('own')
@@ -178,3 +182,75 @@ it('somebody’s own house is left alone', async () => {
     await own.database.drop()
   }
 })
+
+it('goes on live: devices report over MQTT, also after their process died, and its past gets forecasts', async () => {
+  const database = await freshDatabase()
+  const db = openDatabase(database.url, { max: 3 })
+  const log = pino({ level: 'silent' })
+  const secrets = { password: 'embers-for-tests', deviceKey: 'a key for tests' }
+  await seedDemo({
+    db,
+    clock: systemClock,
+    seed: 3,
+    log: () => undefined,
+    passwordCost: 4,
+    pastCount: 2,
+    ...secrets,
+  })
+  const server = composeServer({
+    log,
+    clock: systemClock,
+    tokenKey: 'a key for tests only, of no use elsewhere',
+    build: 'test',
+    passwordCost: 4,
+    http: { host: '127.0.0.1', port: 0 },
+    mqtt: { host: '127.0.0.1', port: 0 },
+    databaseUrl: database.url,
+  })
+  const { httpPort, mqttPort } = await server.start()
+  const fleet = startFleet({
+    mqttUrl: `mqtt://127.0.0.1:${mqttPort ?? 0}`,
+    httpUrl: `http://127.0.0.1:${httpPort}`,
+    seed: 3,
+    log,
+    ...secrets,
+  })
+  const { forecasts } = server.services
+  const stopBackfill = backfillForecasts({ db, log, forecasts, before: systemClock.now() })
+  /** Whether every pit of the restaurant was read after a moment. */
+  const allReadAfter = async (moment: number) => {
+    const { cookers, latest } = await server.services.tonight.ofSite('quarry-road')
+    return cookers.every(({ pitChannelId }) =>
+      latest.some(({ channelId, at }) => channelId === pitChannelId && Date.parse(at) > moment),
+    )
+  }
+  try {
+    await until(() => allReadAfter(systemClock.now() - 6000))
+    const first = fleet.pid() ?? 0
+    process.kill(first, 'SIGKILL')
+    const killed = systemClock.now()
+    await until(() => allReadAfter(killed + 1000))
+    expect(fleet.pid()).not.toBe(first)
+    const [piece] = await rows(z.object({ id: z.number() }), `select id from pieces where stage = 'done'`, db)
+    await until(async () => (await forecasts.list(piece?.id ?? 0, { limit: 500 })).items.length > 10)
+    const [last, ...earlier] = (await forecasts.list(piece?.id ?? 0, { limit: 500 })).items
+    expect(last).toMatchObject({ phase: 'done', pullReason: 'already-pulled' })
+    expect(earlier.filter((one) => one.pull !== null).length).toBeGreaterThan(5)
+    for (const { madeAt } of earlier) expect(Date.parse(madeAt) % (15 * 60_000)).toBe(0)
+  } finally {
+    await Promise.all([fleet.stop(), stopBackfill()])
+    await server.stop()
+    await db.destroy()
+    await database.drop()
+  }
+  expect(() => process.kill(fleet.pid() ?? 0, 0)).toThrow('ESRCH')
+}, 90_000)
+
+async function until(test: () => Promise<boolean>): Promise<void> {
+  const deadline = systemClock.now() + 40_000
+  while (systemClock.now() < deadline) {
+    if (await test()) return
+    await new Promise((resolve) => setTimeout(resolve, 200))
+  }
+  throw new Error('Waited in vain.')
+}

@@ -1,12 +1,15 @@
 import { randomUUID } from 'node:crypto'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
 import { z } from 'zod'
-import { LatestForecast, PieceForecast } from '#shared/contract/forecast.ts'
+import { PieceForecast, type LatestForecast } from '#shared/contract/forecast.ts'
 import { Health } from '#shared/contract/health.ts'
+import type { LiveChanges } from '#shared/contract/live.ts'
 import { Piece, PieceDetail } from '#shared/contract/piece.ts'
 import { systemClock } from '#shared/domain/clock.ts'
 import { composeServer, type ComposedServer } from '../../server/compose.ts'
 import { pino } from 'pino'
+import { createForecastPool } from '../../server/jobs/forecast-pool.ts'
+import { createForecastRunner } from '../../server/jobs/forecast-runner.ts'
 import { startTestServer, type TestServer } from '../harness/server.ts'
 
 const minute = 60_000
@@ -174,7 +177,7 @@ describe('forecasts', () => {
   })
 
   it('end with the pull, and go on when it is taken back', async () => {
-    await log(piece, { kind: 'pull', by: 'feel' }, ago(1))
+    await log(piece, { kind: 'pull', by: 'feel' })
     expect(await forecastOf(piece, (one) => one.pullReason === 'already-pulled')).toMatchObject({
       phase: 'done',
       pull: null,
@@ -202,12 +205,58 @@ describe('forecasts', () => {
     const at = [0, 1, 14, 15, 29.5, 30, 47].map((minutes) => new Date(base + minutes * minute).toISOString())
     await forecasts.keepPast(at.map((madeAt) => ({ ...like, madeAt, model: 'test' })))
     expect(await forecasts.thin(base, base + 60 * minute)).toBe(3)
-    const kept = (await forecasts.list(piece.id, { limit: 100 })).items.filter(
-      (one) => one.model !== undefined,
-    )
     const old = (await forecasts.list(piece.id, { limit: 100 })).items.filter((one) => one.madeAt < '2026-02')
     expect(old.map((one) => (Date.parse(one.madeAt) - base) / minute)).toEqual([47, 30, 29.5, 14])
-    expect(kept).toEqual([])
+  })
+})
+
+describe('trouble', () => {
+  it('with a worker that is late is told, costs that forecast only, and is over the next time', async () => {
+    const piece = await start({ label: 'late', channelId: channel(2) })
+    await forecastOf(piece)
+    const warnings: string[] = []
+    const log = pino({ level: 'warn' }, { write: (line) => warnings.push(line) })
+    const { forecasts } = server.server.services
+    const made: LatestForecast[] = []
+    const common = {
+      clock: systemClock,
+      log,
+      cooks: forecasts.cooks,
+      forecasts,
+      house: () => null,
+      publish: (_: string, changes: LiveChanges) => made.push(...(changes.forecasts ?? [])),
+    }
+    const pool = createForecastPool({ withinMs: 1 })
+    const late = createForecastRunner({ ...common, pool })
+    await late.runAll()
+    expect(late.state().failed).toBeGreaterThan(0)
+    expect(late.state().failed).toBe(late.state().pieces)
+    expect(warnings.join('')).toContain('could not be forecast')
+    expect(made).toEqual([])
+    await pool.stop()
+
+    const patient = createForecastPool()
+    const next = createForecastRunner({ ...common, pool: patient })
+    // Asked for three times at once it runs now and once more, not thrice.
+    await Promise.all([next.run(piece.id), next.run(piece.id), next.run(piece.id)])
+    expect(made.map((one) => one.pieceId)).toEqual([piece.id, piece.id])
+    await patient.stop()
+  })
+
+  it('with the connection of the jobs passes', async () => {
+    const isOn = async () => {
+      const answer = await server.api.get('/api/health')
+      return Health.parse(answer.body).forecast.detail !== 'another process runs the forecasts'
+    }
+    expect(await isOn()).toBe(true)
+    await server.db.raw(
+      `select pg_terminate_backend(pid) from pg_stat_activity
+       where application_name = 'coalhand duty' and datname = current_database()`,
+    )
+    await until('the duty to be lost', async () => ((await isOn()) ? undefined : true))
+    await until('the duty to be taken again', async () => ((await isOn()) ? true : undefined))
+    const piece = await start({ label: 'after', channelId: channel(3) })
+    await forecastOf(piece)
   })
 })
 

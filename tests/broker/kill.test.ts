@@ -1,3 +1,6 @@
+import { mkdtempSync, rmSync } from 'node:fs'
+import { tmpdir } from 'node:os'
+import { join } from 'node:path'
 import type { MqttClient } from 'mqtt'
 import { expect, test } from 'vitest'
 import { z } from 'zod'
@@ -16,7 +19,9 @@ test('20 000 readings while the server is killed three times: exactly 20 000 row
   const db = openDatabase(database.url, { max: 2 })
   const { device } = (await makeHouse(db)).own
   const port = await freePort()
-  let server = await startServerProcess(database.url, port)
+  const dataDir = mkdtempSync(join(tmpdir(), 'coalhand-kill-'))
+  const start = () => startServerProcess({ databaseUrl: database.url, mqttPort: port, dataDir })
+  let server = await start()
   const boxes = await Promise.all(
     Array.from({ length: clients }, (_, index) =>
       connectDevice(port, device, { clientId: `box-${index}`, clean: false, reconnectPeriod: 100 }),
@@ -58,7 +63,7 @@ test('20 000 readings while the server is killed three times: exactly 20 000 row
     // What was acknowledged before the kill is in the database, whatever came of the rest.
     const claimed = acknowledged.size
     expect(Number((await db('readings').count())[0]?.['count'])).toBeGreaterThanOrEqual(claimed)
-    server = await startServerProcess(database.url, port)
+    server = await start()
   }
   await all
   expect(lost).toBeGreaterThanOrEqual(3 * clients)
@@ -75,6 +80,7 @@ test('20 000 readings while the server is killed three times: exactly 20 000 row
   await server.kill()
   await db.destroy()
   await database.drop()
+  rmSync(dataDir, { recursive: true })
 })
 
 /** Sends every fourth number, a hundred on the way at a time, so that a kill always meets some of them. */

@@ -1,30 +1,43 @@
-import { spawn, type ChildProcess } from 'node:child_process'
+import { spawn } from 'node:child_process'
 import { createServer } from 'node:net'
 import { once } from 'node:events'
+import { createInterface } from 'node:readline'
 import { fileURLToPath } from 'node:url'
 import { z } from 'zod'
 
-/** A server of its own process, which can be killed. */
+/** The server in earnest, in a process of its own, which can be killed. */
 export interface ServerProcess {
   /** kill -9, and waits until it is gone. */
   kill: () => Promise<void>
 }
 
-const entry = fileURLToPath(new URL('./serve.ts', import.meta.url))
 const root = fileURLToPath(new URL('../../', import.meta.url))
 
 /** Starts a server on a database and a port for devices; resolves when it listens. */
-export async function startServerProcess(databaseUrl: string, mqttPort: number): Promise<ServerProcess> {
-  const child: ChildProcess = spawn(
-    process.execPath,
-    ['--import', 'tsx', entry, databaseUrl, String(mqttPort)],
-    {
-      cwd: root,
-      stdio: ['ignore', 'pipe', 'inherit'],
+export async function startServerProcess(options: {
+  databaseUrl: string
+  mqttPort: number
+  dataDir: string
+}): Promise<ServerProcess> {
+  const child = spawn(process.execPath, ['--import', 'tsx', 'server/main.ts'], {
+    cwd: root,
+    stdio: ['ignore', 'pipe', 'inherit'],
+    env: {
+      ...process.env,
+      DATABASE_URL: options.databaseUrl,
+      DATA_DIR: options.dataDir,
+      MQTT_PORT: String(options.mqttPort),
+      PORT: '0',
+      DEMO: 'off',
+      LOG_LEVEL: 'info',
     },
-  )
+  })
   const left = once(child, 'exit')
-  const listens = new Promise<void>((resolve) => child.stdout?.once('data', () => resolve()))
+  const listens = new Promise<void>((resolve) => {
+    createInterface(child.stdout).on('line', (line) => {
+      if (line.includes('Coalhand stands at')) resolve()
+    })
+  })
   const first = await Promise.race([listens.then(() => 'listens'), left.then(() => 'left')])
   if (first === 'left') throw new Error('The server did not start.')
   return {

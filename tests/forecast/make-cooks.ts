@@ -3,6 +3,8 @@ import { join } from 'node:path'
 import { parseArgs } from 'node:util'
 import { seededRandom } from '#shared/domain/random.ts'
 import { drawCook } from './generator/cook.ts'
+import { drawKitchen } from './generator/kitchen.ts'
+import { drawSimulatorKitchen } from './generator/simulator-kitchen.ts'
 import { drawHouse, type PieceLaw } from './generator/house.ts'
 
 /**
@@ -18,6 +20,8 @@ const { values } = parseArgs({
     out: { type: 'string', default: '.cache/cooks/1' },
     /** Shares of the physics vapour, juice and front: `0.5,0.5,0`. Drawn when not given. */
     laws: { type: 'string' },
+    /** `own` or `simulator`: whose physics. */
+    physics: { type: 'string', default: 'own' },
   },
 })
 
@@ -32,7 +36,12 @@ for (const [name, count] of [
   mkdirSync(folder, { recursive: true })
   const list = []
   for (let i = 0; i < count; i++) {
-    const { csv, ...facts } = drawCook(house, seed, ++index)
+    const { csv, ...facts } = drawCook(
+      house,
+      seed,
+      ++index,
+      values.physics === 'simulator' ? drawSimulatorKitchen : drawKitchen,
+    )
     writeFileSync(join(folder, `${facts.id}.csv`), csv)
     list.push(facts)
   }

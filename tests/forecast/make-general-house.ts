@@ -17,11 +17,13 @@ import { replayCook } from '#shared/forecast/replay.ts'
 import { at } from '#shared/forecast/small-matrix.ts'
 import { drawCook } from './generator/cook.ts'
 import { finishedCook } from './generator/finished-cook.ts'
+import { drawKitchen } from './generator/kitchen.ts'
+import { drawSimulatorKitchen } from './generator/simulator-kitchen.ts'
 import { drawHouse } from './generator/house.ts'
 
 /**
  * Makes the general model that ships with the product, src/shared/forecast/general-house.ts, from the test generator:
- * ten cooks of each of the houses with seeds 101 to 160, no two alike.
+ * ten cooks of each of the houses with seeds 101 to 160, no two alike, the last fifteen with the simulator's physics.
  * `node --import tsx tests/forecast/make-general-house.ts`
  */
 const seeds = Array.from({ length: 60 }, (_, i) => 101 + i)
@@ -30,7 +32,9 @@ const cooksAHouse = 10
 const finished = seeds
   .flatMap((seed) => {
     const house = drawHouse(seededRandom('house', seed))
-    return Array.from({ length: cooksAHouse }, (_, i) => finishedCook(drawCook(house, seed, i + 1)))
+    return Array.from({ length: cooksAHouse }, (_, i) =>
+      finishedCook(drawCook(house, seed, i + 1, seed > 145 ? drawSimulatorKitchen : drawKitchen)),
+    )
   })
   .filter((cook) => cook.pullReachedS !== undefined)
 const learned = finished.map(({ facts, readings, events, pullReachedS }) => ({

@@ -58,11 +58,17 @@ async function clearEarlierRuns(): Promise<void> {
   for (const name of await readdir(tmpdir())) {
     const pid = Number(name.slice(prefix.length))
     if (!name.startsWith(prefix) || !Number.isInteger(pid) || existsSync(`/proc/${pid}`)) continue
-    const dataDir = join(tmpdir(), name)
-    if (existsSync(join(dataDir, 'postgres/postmaster.pid'))) {
-      const left = await startPostgres({ dataDir, log: () => undefined })
-      await left.stop()
-    }
-    await rm(dataDir, { recursive: true, force: true })
+    await clear(join(tmpdir(), name)).catch((error: unknown) => {
+      // Another run may be clearing it at this moment; it is in nobody's way.
+      console.warn(`An earlier run's ${name} could not be cleared away: ${String(error)}`)
+    })
   }
+}
+
+async function clear(dataDir: string): Promise<void> {
+  if (existsSync(join(dataDir, 'postgres/postmaster.pid'))) {
+    const left = await startPostgres({ dataDir, log: () => undefined })
+    await left.stop()
+  }
+  await rm(dataDir, { recursive: true, force: true })
 }

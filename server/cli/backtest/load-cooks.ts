@@ -4,7 +4,7 @@ import { z } from 'zod'
 import { wrapMethods } from '#shared/domain/cooking.ts'
 import type { FinishedCook } from '#shared/forecast/finished-cook.ts'
 import { createReachRule } from '#shared/forecast/reach-rule.ts'
-import type { CookEvent, CookFacts, CookReadings } from '#shared/forecast/types.ts'
+import type { CookEvent, CookReadings } from '#shared/forecast/types.ts'
 
 export interface LoadedCooks {
   cooks: FinishedCook[]

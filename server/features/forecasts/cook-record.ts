@@ -82,10 +82,13 @@ export async function cookRecord(db: Knex, pieceId: number): Promise<CookRecord 
   }
 }
 
-/** The pieces of every site that are on a fire now. */
-export async function cookingPieces(db: Knex): Promise<number[]> {
+/** The pieces of every site that are on a fire now, and those pulled since anything was last said of them. */
+export async function piecesToForecast(db: Knex): Promise<number[]> {
   const answer: unknown = await db.raw(
-    `select id from pieces where stage <> 'done' and stage in ('cooking', 'wrapped') order by id`,
+    `select id from pieces p where stage <> 'done' and on_at is not null and (
+       pulled_at is null
+       or not exists (select 1 from forecasts where piece_id = p.id and made_at >= p.pulled_at)
+     ) order by id`,
   )
   return IdRows.parse(answer).rows.map((row) => row.id)
 }

@@ -2,7 +2,7 @@ import type { Knex } from 'knex'
 import { assembleCook, type AssembledCook, type Series } from './assemble-cook.ts'
 import {
   cookRecord,
-  cookingPieces,
+  piecesToForecast,
   finishedPieces,
   type ChannelStretch,
   type CookRecord,
@@ -42,8 +42,8 @@ export function createCookSource({ db, readings }: CookSourceDeps) {
   return {
     lines,
 
-    /** The pieces of every site that are on a fire now, by number. */
-    cooking: (): Promise<number[]> => cookingPieces(db),
+    /** The pieces of every site that are on a fire now or just off it, by number. */
+    toForecast: (): Promise<number[]> => piecesToForecast(db),
 
     /** Finished pieces that had a probe of their own, oldest first, by number. */
     finished: (): Promise<number[]> => finishedPieces(db),

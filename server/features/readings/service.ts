@@ -166,8 +166,7 @@ export function createReadingService({ db, clock, sensorsOf, ingest }: ReadingDe
       try {
         return await withPatience(ingest.accept({ device, topic, payload: pack }))
       } catch (error) {
-        if (error instanceof IngestUnavailable)
-          throw unavailable(sendAgain)
+        if (error instanceof IngestUnavailable) throw unavailable(sendAgain)
         throw error
       }
     },

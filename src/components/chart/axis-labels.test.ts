@@ -24,7 +24,7 @@ describe('axisLabels', () => {
   })
 
   it('gives the service hour its place before the ticks', () => {
-    const shown = labels([{ x: 310, text: 'service 11:00' }])
+    const shown = labels([{ x: 340, text: 'service 11:00' }])
     expect(shown.map(({ kind }) => kind)).toEqual(['tick', 'midnight', 'service'])
   })
 

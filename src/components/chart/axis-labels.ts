@@ -24,7 +24,11 @@ export function axisLabels(options: {
     ...services.map(({ x, text }): AxisLabel => ({ x, text, kind: 'service' })),
     ...ticks
       .toSorted((a, b) => Number(b.midnight) - Number(a.midnight))
-      .map((tick): AxisLabel => ({ x: tick.x, text: textOf(tick), kind: tick.midnight ? 'midnight' : 'tick' })),
+      .map((tick): AxisLabel => ({
+        x: tick.x,
+        text: textOf(tick),
+        kind: tick.midnight ? 'midnight' : 'tick',
+      })),
   ]
   const placed: (AxisLabel & { half: number })[] = []
   for (const label of wanted) {

@@ -45,11 +45,27 @@ const sizes: Record<LaneForm, Omit<ChartStyle, 'form' | 'palette' | 'fontFamily'
   },
   cook: {
     ...{ time: 20, text: 15, small: 13, flags: true, scale: true },
-    ...{ coreLine: 2.5, rule: 1, mark: 5, ribbon: 64, bar: 8, gap: 8 },
+    ...{ coreLine: 2.5, rule: 1, mark: 5, ribbon: 72, bar: 8, gap: 8 },
   },
 }
 
-/** The style of a form in a theme's colours. */
-export function chartStyle(form: LaneForm, palette: Palette, fontFamily: string): ChartStyle {
-  return { form, palette, fontFamily, ...sizes[form] }
+/** The style of a form in a theme's colours, larger or smaller by a factor. */
+export function chartStyle(form: LaneForm, palette: Palette, fontFamily: string, scale = 1): ChartStyle {
+  const { flags, scale: scaleShown, ...px } = sizes[form]
+  return {
+    form,
+    palette,
+    fontFamily,
+    flags,
+    scale: scaleShown,
+    time: px.time * scale,
+    text: px.text * scale,
+    small: px.small * scale,
+    coreLine: px.coreLine * scale,
+    rule: Math.max(1, px.rule * scale),
+    mark: px.mark * scale,
+    ribbon: px.ribbon * scale,
+    bar: px.bar * scale,
+    gap: px.gap * scale,
+  }
 }

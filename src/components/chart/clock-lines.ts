@@ -31,6 +31,6 @@ export function clockLineShapes(
     ...data.services
       .map((at) => frame.x(at))
       .flatMap((x) => [line(x - apart, palette.text, rule), line(x + apart, palette.text, rule)]),
-    line(frame.x(data.window.now), palette.text, rule * 2),
+    ...(data.ended === true ? [] : [line(frame.x(data.window.now), palette.text, rule * 2)]),
   ]
 }

@@ -31,7 +31,7 @@ export function eventShapes(
     }
     const piece = pieces.find(({ id }) => id === mark.pieceId)
     if (piece === undefined) return []
-    const c = valueNear(piece, mark)
+    const c = valueAt(piece.line, mark.at)
     if (c === null) return []
     const strong = mark.kind === 'wrap' || mark.kind === 'pull'
     return [
@@ -105,12 +105,4 @@ function triangle(x: number, tip: number): XY[] {
     [x + 1.1, base],
     [x - 1.1, base],
   ]
-}
-
-/** Where a mark stands: on the line, else on the temperature it is about. */
-function valueNear(piece: LanePiece, mark: LaneMark): number | null {
-  const measured = valueAt(piece.line, mark.at)
-  if (measured !== null) return measured
-  if (mark.kind === 'wrap') return piece.wrapAtC
-  return mark.kind === 'pull' ? piece.pullAtC : null
 }

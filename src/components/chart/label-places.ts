@@ -63,12 +63,13 @@ export function placeAt(
   blocks: readonly TextBlock[],
 ): boolean {
   const { bounds, style, frame } = layout
+  const extra = (box: Box) => coverOf(layout, box) + barCover(layout, box) / 2
   const candidates = blocks.flatMap((block, variant) =>
     columnsFor(layout, block).flatMap((x, column) =>
       heights(layout, block).map((top): BlockCandidate => {
         const off = Math.abs(top + block.height / 2 - y)
         const cost = variant * 2 + column * 3 + off / style.small
-        return { x, y: top, width: block.width, height: block.height, block, cost }
+        return { x, y: top, width: block.width, height: block.height, block, cost, extra }
       }),
     ),
   )

@@ -88,6 +88,8 @@ export interface LaneData {
   pit: LanePit | null
   pieces: readonly LanePiece[]
   marks: readonly LaneMark[]
+  /** True for a cook of the past: there is no now in it. */
+  ended?: boolean
 }
 
 /** Puts words to a key of the person's language. */

@@ -1,4 +1,5 @@
 import { describe, expect, it } from 'vitest'
+import { z } from 'zod'
 import { fontFamily, palettes, themeNames } from '@/assets/tokens.ts'
 import { chartStyle } from './chart-style.ts'
 import type { LaneForm } from './chart-style.ts'
@@ -111,14 +112,24 @@ describe('laneOption', () => {
         ticks: [],
       }),
     )
+    const parts = [
+      'clock',
+      'fans',
+      'rules',
+      'envelope',
+      'piece-1',
+      'ribbon',
+      'bars',
+      'stale',
+      'marks',
+      'labels',
+    ]
     for (const { option } of drawn) {
-      expect(option['series']).toEqual(
-        expect.arrayContaining(
-          ['clock', 'fans', 'rules', 'envelope', 'piece-1', 'ribbon', 'bars', 'stale', 'marks', 'labels'].map(
-            (id) => expect.objectContaining({ id }),
-          ),
-        ),
-      )
+      const ids = z
+        .array(z.object({ id: z.string() }))
+        .parse(option['series'])
+        .map(({ id }) => id)
+      expect(ids.toSorted()).toEqual(parts.toSorted())
     }
   })
 })

@@ -41,7 +41,8 @@ export function laneOption(input: {
   const { data, style, say } = input
   const frame = laneFrame(data, input.size, style)
   const { cooking } = inStages(data.pieces)
-  const single = cooking.length > mostSingly ? null : singleLabels(data, frame, style, say)
+  const single =
+    data.ended === true ? [] : cooking.length > mostSingly ? null : singleLabels(data, frame, style, say)
   const folded = single === null
   const labels = single ?? foldedLabels(data, frame, style, say)
   const drawn = folded ? [] : cooking

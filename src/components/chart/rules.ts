@@ -10,8 +10,13 @@ interface Rule {
   label: string
 }
 
+interface Span {
+  lowC: number
+  highC: number
+}
+
 /** Temperatures closer than this share one rule: two would read as one thick line. */
-const sameRuleC = 1.5
+const sameRuleC = 3
 
 /**
  * The wrap and pull temperatures of a lane's pieces as fine rules, each broken by its own value like the height on
@@ -65,15 +70,27 @@ export function ruleShapes(
 }
 
 function rulesOf(pieces: readonly LanePiece[], say: Say): Rule[] {
-  const rules: Rule[] = []
-  const add = (c: number, key: 'chart.rule.pull' | 'chart.rule.wrap') => {
-    const label = say.words(key, { at: say.temperature(c) })
-    const near = rules.some((rule) => Math.abs(rule.c - c) < sameRuleC)
-    if (!near) rules.push({ c, label })
+  return [
+    ...merged(pieces.map((piece) => piece.pullAtC)).map((span) => ruleOf(span, 'chart.rule.pull', say)),
+    ...merged(pieces.map((piece) => piece.wrapAtC)).map((span) => ruleOf(span, 'chart.rule.wrap', say)),
+  ]
+}
+
+function ruleOf({ lowC, highC }: Span, key: 'chart.rule.pull' | 'chart.rule.wrap', say: Say): Rule {
+  const same = say.temperature(lowC) === say.temperature(highC)
+  const at = same ? say.temperature(lowC) : say.temperatureSpan(lowC, highC)
+  return { c: (lowC + highC) / 2, label: say.words(key, { at }) }
+}
+
+/** Temperatures, from the lowest up, with those that would lie on one another put together. */
+function merged(temperatures: readonly number[]): Span[] {
+  const spans: Span[] = []
+  for (const c of temperatures.toSorted((a, b) => a - b)) {
+    const last = spans.at(-1)
+    if (last !== undefined && c - last.lowC < sameRuleC) last.highC = c
+    else spans.push({ lowC: c, highC: c })
   }
-  for (const piece of pieces) add(piece.pullAtC, 'chart.rule.pull')
-  for (const piece of pieces) add(piece.wrapAtC, 'chart.rule.wrap')
-  return rules
+  return spans
 }
 
 /** A place for the label on its rule left of the fans, clear of other labels and, if it can be, of every line. */
@@ -86,7 +103,7 @@ function labelBox(
   const { gap, small } = lane.style
   const size = { width: textWidth(label, small) + gap, height: small * 1.2 }
   const places: Box[] = []
-  for (let x = gap; x + size.width < lane.frame.width * 0.36; x += size.width / 3) {
+  for (let x = gap; x + size.width < lane.frame.width * 0.39; x += size.width / 8) {
     const box = { x, y: y - size.height / 2, ...size }
     if (!taken.some((other) => overlaps(box, other))) places.push(box)
   }

@@ -36,5 +36,5 @@ export function scaleShapes(data: LaneData, frame: LaneFrame, style: ChartStyle,
   })
   if (data.pit === null) return levels
   const band = say.words('chart.band', { span: say.temperatureSpan(data.pit.bandLowC, data.pit.bandHighC) })
-  return [...levels, ...note(band, frame.ribbon.y + small * 0.7)]
+  return [...levels, ...note(band, frame.ribbon.y - small * 0.2)]
 }

@@ -25,8 +25,8 @@ export function textWidth(text: string, sizePx: number): number {
 /** The text, shortened with an ellipsis until it is no wider than `maxPx`. */
 export function fitText(text: string, sizePx: number, maxPx: number): string {
   if (textWidth(text, sizePx) <= maxPx) return text
-  const characters = [...text]
-  while (characters.length > 1 && textWidth(`${characters.join('').trimEnd()}…`, sizePx) > maxPx)
-    characters.pop()
-  return `${characters.join('').trimEnd()}…`
+  const characters = Array.from(text)
+  const shortened = () => `${characters.join('').trimEnd()}…`
+  while (characters.length > 1 && textWidth(shortened(), sizePx) > maxPx) characters.pop()
+  return shortened()
 }

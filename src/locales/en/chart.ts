@@ -1,1 +1,23 @@
-export const chart = {}
+/** Words that stand in the lanes: short, they are read from four metres. */
+export const chart = {
+  service: 'service {at}',
+  rule: { pull: 'pull {at}', wrap: 'wrap {at}' },
+  band: 'pit, band {span}',
+  pullNow: 'pull now',
+  pullAt: 'pull {at}, {span}',
+  silent: 'silent {span}',
+  resting: 'resting {span}',
+  held: 'held {span}',
+  pulled: 'pulled {span} ago',
+  pieces: '{count} pieces',
+  afterPull: '{count} resting or held',
+  first: 'first',
+  last: 'last',
+  risk: { soon: 'service at risk', now: 'late for service' },
+  shortForecast: '{at}, {span}',
+  noProbe: 'no probe',
+  follows: 'goes by {label}',
+  noForecastYet: 'no forecast yet',
+  nothingOn: 'nothing on it',
+  lane: '{name}, pit {pit}: {pieces}',
+}

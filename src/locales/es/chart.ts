@@ -1,1 +1,22 @@
-export const chart = {}
+export const chart = {
+  service: 'servicio {at}',
+  rule: { pull: 'sacar {at}', wrap: 'envolver {at}' },
+  band: 'ahumador, margen {span}',
+  pullNow: 'sacar ya',
+  pullAt: 'sacar {at}, {span}',
+  silent: 'muda {span}',
+  resting: 'reposa {span}',
+  held: 'reservada {span}',
+  pulled: 'sacada hace {span}',
+  pieces: '{count} piezas',
+  afterPull: '{count} en reposo o reserva',
+  first: 'primera',
+  last: 'última',
+  risk: { soon: 'servicio en riesgo', now: 'tarde para el servicio' },
+  shortForecast: '{at}, {span}',
+  noProbe: 'sin sonda',
+  follows: 'según {label}',
+  noForecastYet: 'aún sin pronóstico',
+  nothingOn: 'vacío',
+  lane: '{name}, ahumador {pit}: {pieces}',
+}

@@ -96,7 +96,7 @@ function learnTarget(past: readonly PastForecast[], general: readonly Correction
   const whole = cellFrom(scores)
   const generalWhole = meanCell(general)
   const cooks = new Set(scores.map(({ cook }) => cook)).size
-  return Array.from({ length: cellCount }, (_, index) => {
+  const cells = Array.from({ length: cellCount }, (_, index) => {
     const part = Math.floor(index / perPart)
     const ofPart = scores.filter(({ cell }) => Math.floor(cell / perPart) === part)
     const ofCell = scores.filter(({ cell }) => cell === index)
@@ -105,6 +105,30 @@ function learnTarget(past: readonly PastForecast[], general: readonly Correction
     const partCell = mixCells(cellFrom(ofPart), cooksIn(ofPart), partGeneral, poolWorth)
     return mixCells(cellFrom(ofCell), cooksIn(ofCell), partCell, poolWorth)
   })
+  return levelled(cells, scores, cooks)
+}
+
+/**
+ * Leaning on wider pools leaves the whole a little too wide or too narrow. One factor for each side brings the share of
+ * past times beyond the bound back to one in ten, as far as the number of cooks bears it out.
+ */
+function levelled(
+  cells: readonly CorrectionCell[],
+  scores: readonly Score[],
+  cooks: number,
+): CorrectionCell[] {
+  if (scores.length === 0) return [...cells]
+  const needed = (side: 'low' | 'high') => {
+    const sorted = Float64Array.from(scores, ({ cell, score }) => {
+      const { shift, [side]: bound } = cells[cell] ?? { shift: 0, low: 1, high: 1 }
+      return (side === 'high' ? score - shift : shift - score) / bound
+    }).sort()
+    const rank = conformalRank(sorted.length, Math.min(1, (0.9 * (cooks + 1)) / cooks))
+    return Math.max(0.3, at(sorted, rank - 1)) ** (cooks / (cooks + generalWorth))
+  }
+  const low = needed('low')
+  const high = needed('high')
+  return cells.map((cell) => ({ shift: cell.shift, low: cell.low * low, high: cell.high * high }))
 }
 
 interface Score {

@@ -17,6 +17,7 @@ export const misfitTauS = 3600
 /** What a single value of the cleaned series is good for, K. */
 const readingC = 0.2
 const studentFreedom = 4
+const wrapParameters = [8, 9]
 
 /** A law fitted to one piece. */
 export interface PieceFit {
@@ -34,14 +35,15 @@ export interface PieceFit {
 /**
  * Fits one law to a piece's readings: maximum a posteriori with a Student-t loss. The model's error is taken as a
  * process that forgets within an hour (first-order autoregressive), so that sixty readings an hour do not count as
- * sixty independent ones; the residuals are whitened accordingly.
+ * sixty independent ones; the residuals are whitened accordingly. With `forgetS` old readings count less, so that a
+ * law that is a little wrong over the whole cook is right about where the piece stands now.
  */
 export function fitPiece(
   law: EvaporationLaw,
   ready: ReadyPrior,
   cook: PreparedCook,
   regressors: Float64Array,
-  options: { start?: ArrayLike<number>; maxIterations?: number } = {},
+  options: { start?: ArrayLike<number>; maxIterations?: number; forgetS?: number } = {},
 ): PieceFit {
   const prior = priorOf(ready, regressors)
   const { timesS, coreC } = cook.core
@@ -53,7 +55,8 @@ export function fitPiece(
   for (let i = 0; i < count; i++) {
     const kept = i === 0 ? 0 : Math.exp(-(at(timesS, i) - at(timesS, i - 1)) / misfitTauS)
     keep[i] = kept
-    spread[i] = Math.sqrt(misfit ** 2 * (1 - kept ** 2) + readingC ** 2 * (1 + kept ** 2))
+    const faded = options.forgetS === undefined ? 1 : Math.exp((cook.atS - at(timesS, i)) / options.forgetS)
+    spread[i] = faded * Math.sqrt(misfit ** 2 * (1 - kept ** 2) + readingC ** 2 * (1 + kept ** 2))
   }
   const residuals = (parameters: Float64Array, out: Float64Array) => {
     simulateCore(law, parameters, cook, modelled)
@@ -71,8 +74,11 @@ export function fitPiece(
     prior,
     studentFreedom,
     steps: parameterSteps,
+    // Before the wrap the readings say nothing about it.
+    ...(cook.wrapS === undefined ? { idle: wrapParameters } : {}),
     maxIterations: options.maxIterations ?? 6,
     tolerance: 1e-4,
+    damping: 1e-3,
   })
   let scale = 0
   for (let i = 0; i < count; i++) scale += Math.log(at(spread, i))

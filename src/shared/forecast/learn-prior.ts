@@ -18,6 +18,8 @@ export interface PriorLearning {
   constantWorth?: number
   slopeWorth?: number
   covarianceWorth?: number
+  /** The model's own error is never believed to be smaller than this, K. */
+  leastMisfitC?: number
 }
 
 /**
@@ -29,7 +31,13 @@ export interface PriorLearning {
 export function learnPriors(
   cooks: readonly LearnedCook[],
   general: Record<EvaporationLaw, LawPrior>,
-  { rounds = 4, constantWorth = 2, slopeWorth = 12, covarianceWorth = 15 }: PriorLearning = {},
+  {
+    rounds = 4,
+    constantWorth = 4,
+    slopeWorth = 30,
+    covarianceWorth = 15,
+    leastMisfitC = 0.25,
+  }: PriorLearning = {},
 ): Record<EvaporationLaw, LawPrior> {
   let present = general
   const starts: Partial<Record<EvaporationLaw, Float64Array>>[] = cooks.map(() => ({}))
@@ -57,7 +65,12 @@ export function learnPriors(
         const entry = fits[j]
         return entry ? [{ x, ...entry }] : []
       })
-      return maximise(law, cases, general[law], present[law], { constantWorth, slopeWorth, covarianceWorth })
+      return maximise(law, cases, general[law], present[law], {
+        constantWorth,
+        slopeWorth,
+        covarianceWorth,
+        leastMisfitC,
+      })
     })
     const [juice, vapour] = learned
     if (!juice || !vapour) throw new Error('there are two laws')
@@ -77,7 +90,7 @@ function maximise(
   cases: readonly PosteriorCase[],
   general: LawPrior,
   present: LawPrior,
-  worth: { constantWorth: number; slopeWorth: number; covarianceWorth: number },
+  worth: Required<Omit<PriorLearning, 'rounds'>>,
 ): LawPrior {
   // A law that few pieces follow still learns a little from all of them.
   const weights = cases.map(({ weight }) => 0.15 + 0.85 * weight)
@@ -104,7 +117,7 @@ function maximise(
   })
   return {
     share: (2 * general.share + cases.reduce((sum, { weight }) => sum + weight, 0)) / (2 + cases.length),
-    misfitC: misfitOf(cases, general, present),
+    misfitC: misfitOf(cases, general, present, worth.leastMisfitC),
     coefficients,
     covariance: covarianceOf(law, cases, weights, { ...general, coefficients }, worth.covarianceWorth),
   }
@@ -139,7 +152,12 @@ function covarianceOf(
 }
 
 /** The model's own error: whitened residuals of about unit size mean that it is right. Robust: from the middle half. */
-function misfitOf(cases: readonly PosteriorCase[], general: LawPrior, present: LawPrior): number {
+function misfitOf(
+  cases: readonly PosteriorCase[],
+  general: LawPrior,
+  present: LawPrior,
+  leastC: number,
+): number {
   const sizes: number[] = []
   for (const { fit, weight } of cases) {
     if (weight < 0.3) continue
@@ -152,5 +170,5 @@ function misfitOf(cases: readonly PosteriorCase[], general: LawPrior, present: L
   const factor = at(sizes, sizes.length >> 1) / 0.72
   const learned = present.misfitC * Math.min(1.6, Math.max(0.6, factor))
   const share = cases.length / (cases.length + 5)
-  return Math.min(3, Math.max(0.25, general.misfitC + (learned - general.misfitC) * share))
+  return Math.min(3, Math.max(leastC, general.misfitC + (learned - general.misfitC) * share))
 }

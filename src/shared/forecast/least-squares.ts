@@ -16,11 +16,15 @@ export interface LeastSquaresProblem {
   studentFreedom?: number
   /** Step of the numerical derivative for each parameter; left out, 1e-6 of its size. */
   steps?: ArrayLike<number>
+  /** Parameters that the residuals do not depend on this time: only the prior moves them. */
+  idle?: readonly number[]
   /** Central differences are twice the work and far more exact. */
   central?: boolean
   maxIterations?: number
   /** Stops when the cost falls by less than this share. */
   tolerance?: number
+  /** Damping to begin with: small where the start is good, as under a prior. */
+  damping?: number
 }
 
 export interface LeastSquaresFit {
@@ -33,10 +37,13 @@ export interface LeastSquaresFit {
   iterations: number
 }
 
+const leastGain = 0.1
+
 /**
  * Non-linear least squares by Levenberg and Marquardt's method, with an optional normal prior (then the result is
- * the maximum a posteriori) and an optional Student-t loss by iterated weights. Marquardt's scaling of the damping
- * by the curvature's own diagonal; damping times 4 on a failed step, over 5 on a good one.
+ * the maximum a posteriori) and an optional Student-t loss by iterated weights. The damping is
+ * scaled by the largest diagonal of the curvature met so far (Moré 1978), so that a direction that has gone flat does
+ * not run away; damping times 4 on a failed step, over 5 on a good one.
  * Marquardt 1963; Lange, Little and Taylor 1989 for the weights (both from memory). Checked against NIST StRD.
  *
  * @throws where the residuals at the start are not finite.
@@ -54,26 +61,31 @@ export function leastSquares(problem: LeastSquaresProblem): LeastSquaresFit {
   if (!Number.isFinite(cost)) throw new Error('the residuals at the start are not finite')
 
   const trialResiduals = new Float64Array(count)
-  let damping = 1e-3
+  let damping = problem.damping ?? 1
+  const scale = new Float64Array(size)
   let iterations = 0
-  let curvature = new Float64Array(size * size)
-  let gradient = new Float64Array(size)
   for (; iterations < maxIterations; iterations++) {
     derive()
-    ;({ curvature, gradient } = normalEquations(jacobian, residuals, parameters, prior, studentFreedom))
+    const { curvature, gradient } = normalEquations(jacobian, residuals, parameters, prior, studentFreedom)
+    for (let i = 0; i < size; i++) scale[i] = Math.max(at(scale, i), at(curvature, i * size + i))
     let accepted = false
     let fall = 0
     for (let attempt = 0; attempt < 12 && !accepted; attempt++) {
       const damped = curvature.slice()
       for (let i = 0; i < size; i++)
-        damped[i * size + i] = at(curvature, i * size + i) * (1 + damping) + 1e-300
+        damped[i * size + i] = at(curvature, i * size + i) + damping * at(scale, i) + 1e-300
       const factor = cholesky(damped, size)
       if (factor) {
         const step = solveCholesky(factor, gradient, size)
         const trial = parameters.map((value, i) => value - at(step, i))
         problem.residuals(trial, trialResiduals)
         const trialCost = costOf(trialResiduals, trial, prior, studentFreedom)
-        if (trialCost <= cost) {
+        // The fall that the local curvature promised; a step that gains far less than that has left where it holds.
+        let promised = 0
+        for (let i = 0; i < size; i++) {
+          promised += 0.5 * at(step, i) * (at(gradient, i) + damping * at(scale, i) * at(step, i))
+        }
+        if (trialCost <= cost && cost - trialCost >= leastGain * promised) {
           accepted = true
           fall = cost - trialCost
           parameters = trial
@@ -85,14 +97,15 @@ export function leastSquares(problem: LeastSquaresProblem): LeastSquaresFit {
     }
     if (!accepted || fall <= tolerance * Math.abs(cost)) break
   }
-  derive()
-  curvature = normalEquations(jacobian, residuals, parameters, prior, studentFreedom).curvature
+  // The curvature is taken where the last step began: by then the steps are far smaller than the uncertainty.
+  const { curvature } = normalEquations(jacobian, residuals, parameters, prior, studentFreedom)
   const factor = cholesky(curvature, size) ?? diagonalFactor(curvature, size)
   return { parameters, residuals, curvature: factor, cost, iterations }
 
   function derive() {
     const moved = parameters.slice()
     for (let j = 0; j < size; j++) {
+      if (problem.idle?.includes(j)) continue
       const value = at(parameters, j)
       const step = problem.steps ? at(problem.steps, j) : 1e-6 * Math.max(Math.abs(value), 1e-12)
       moved[j] = value + step

@@ -69,22 +69,25 @@ const sinkBeforeRelease = 0.1
 
 /** Reads a parameter vector. Out of all bounds means a useless but finite model, so that a fit can step back. */
 export function ratesOf(law: EvaporationLaw, parameters: ArrayLike<number>): PieceRates {
-  const positive = (index: number) => Math.exp(Math.min(12, Math.max(-12, at(parameters, index))))
   const thresholdC = Math.min(120, Math.max(-20, at(parameters, 7)))
   return {
     vapour: law === 'vapour',
-    conduction: positive(0),
-    transfer: positive(1),
-    core: positive(2),
+    conduction: positive(parameters, 0),
+    transfer: positive(parameters, 1),
+    core: positive(parameters, 2),
     startC: at(parameters, 3),
-    sink: positive(4),
-    water: positive(5),
-    drying: positive(6),
+    sink: positive(parameters, 4),
+    water: positive(parameters, 5),
+    drying: positive(parameters, 6),
     thresholdC,
     thresholdPressure: vapourPressure(thresholdC),
-    wrapCut: Math.min(1.5, positive(8)),
-    wrapTransfer: positive(9),
+    wrapCut: Math.min(1.5, positive(parameters, 8)),
+    wrapTransfer: positive(parameters, 9),
   }
+}
+
+function positive(parameters: ArrayLike<number>, index: number): number {
+  return Math.exp(Math.min(12, Math.max(-12, at(parameters, index))))
 }
 
 /** A piece as it goes on. */

@@ -55,7 +55,8 @@ export function rollForward(
         for (let j = 0; j < longest; j++) noise[j] = Number.NaN
       } else for (let j = 0; j < parameterCount; j++) unit[j] = -at(unit, j)
       const offset = solveTransposed(fit.curvature, unit, parameterCount)
-      const parameters = fit.parameters.map((value, j) => value + at(offset, j))
+      const parameters = fit.parameters.slice()
+      for (let j = 0; j < parameterCount; j++) parameters[j] = at(parameters, j) + at(offset, j)
       const course = rollOne(fit, parameters, cook, conditions, pit, random, noise, i % 2 === 0)
       wrapS[draw] = course.wrapS
       pullS[draw] = course.pullS
@@ -90,7 +91,6 @@ function rollOne(
       error = lastReadC - (before + ((at(state, 3) - before) * (lastReadS - startS)) / Math.max(1, lengthS))
     }
   }
-  const errorAt = (elapsedS: number) => error * Math.exp(-(elapsedS - lastReadS) / misfitTauS)
 
   const stepKeep = Math.exp(-modelStepS / pit.tauS)
   const stepSd = pit.sdC * Math.sqrt(1 - stepKeep * stepKeep)
@@ -108,7 +108,9 @@ function rollOne(
   let wrapS = cook.wrapReachedS ?? Infinity
   let wrapSeen = cook.wrapReachedS !== undefined
   let pullS = Infinity
-  let core = at(state, 3) + errorAt(atS)
+  const errorKeep = Math.exp(-modelStepS / misfitTauS)
+  error *= Math.exp(-(atS - lastReadS) / misfitTauS)
+  let core = at(state, 3) + error
   if (!wrapSeen && core >= conditions.wrapAtC) {
     wrapSeen = true
     wrapS = atS + reachRuleLagS / 2
@@ -126,20 +128,24 @@ function rollOne(
     const wrapped = cook.wrapS !== undefined || nowS > wrapFromS ? 1 : 0
     stepPiece(state, rates, conditions.setC + distance + settling, wrapped, modelStepS / 3600)
     const before = core
-    core = at(state, 3) + errorAt(nowS)
-    const crossS = (target: number) =>
-      nowS - modelStepS * (core > before ? Math.min(1, (core - target) / (core - before)) : 0)
+    error *= errorKeep
+    core = at(state, 3) + error
     if (plan?.kind === 'at-core' && wrapFromS === Infinity && core >= plan.coreC) wrapFromS = nowS
     if (!wrapSeen && core >= conditions.wrapAtC) {
       wrapSeen = true
-      wrapS = crossS(conditions.wrapAtC) + reachRuleLagS
+      wrapS = crossedS(before, core, nowS, conditions.wrapAtC) + reachRuleLagS
       if (plan?.kind === 'after-reach') wrapFromS = wrapS + plan.delayS
     }
-    if (core >= conditions.pullAtC) pullS = crossS(conditions.pullAtC) + reachRuleLagS
+    if (core >= conditions.pullAtC) pullS = crossedS(before, core, nowS, conditions.pullAtC) + reachRuleLagS
     if (k % perFan === 0) fan.push(core)
   }
   if (pullS < Infinity) fan.push(core)
   return { wrapS, pullS, fan: Float64Array.from(fan) }
+}
+
+/** When within the step that ends now the core passed a target. Module-level, as the inner loop makes no closures. */
+function crossedS(before: number, core: number, nowS: number, target: number): number {
+  return nowS - modelStepS * (core > before ? Math.min(1, (core - target) / (core - before)) : 0)
 }
 
 /** The habit of a fire of this kind. */

@@ -24,6 +24,8 @@ export interface StateForecast {
 }
 
 const drawsInAll = 96
+/** A reading's weight falls over this time, seconds. */
+const forgetS = 8 * 3600
 /** The laws' evidence is about a model that is a little wrong whichever law holds: it counts only in part. */
 const evidenceShare = 0.5
 
@@ -62,7 +64,7 @@ export function fitLaws(
   method: WrapMethod,
 ): StateForecast['fits'] {
   const x = regressorsOf(facts, method)
-  const fits = evaporationLaws.map((law) => fitPiece(law, priors[law], cook, x))
+  const fits = evaporationLaws.map((law) => fitPiece(law, priors[law], cook, x, { forgetS }))
   const scores = fits.map(
     (fit) => evidenceShare * fit.logEvidence + Math.log(Math.max(0.02, priors[fit.law].law.share)),
   )

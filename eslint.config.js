@@ -2,6 +2,7 @@ import js from '@eslint/js'
 import prettier from 'eslint-config-prettier'
 import vue from 'eslint-plugin-vue'
 import ts from 'typescript-eslint'
+import vueParser from 'vue-eslint-parser'
 
 const chanceAndClock = [
   {
@@ -42,10 +43,17 @@ export default ts.config(
       '@typescript-eslint/no-confusing-void-expression': ['error', { ignoreArrowShorthand: true }],
     },
   },
+  { files: ['**/*.vue'], languageOptions: { parser: vueParser } },
   {
     files: ['**/*.mjs', '*.js'],
     languageOptions: {
-      globals: { process: 'readonly', console: 'readonly', URL: 'readonly', setTimeout: 'readonly', fetch: 'readonly' },
+      globals: {
+        process: 'readonly',
+        console: 'readonly',
+        URL: 'readonly',
+        setTimeout: 'readonly',
+        fetch: 'readonly',
+      },
     },
   },
   { files: ['src/shared/domain/clock.ts'], rules: { 'no-restricted-syntax': 'off' } },

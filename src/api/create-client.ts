@@ -13,21 +13,24 @@ export type CallInput<E extends Endpoint> = Part<'params', z.input<E['params']>>
     signal?: AbortSignal
   }
 
+/** What takes nothing, or nothing that it must have. */
+type Empty = Record<string, never>
+
 /** A part may be left out when the schema takes nothing, or an empty object. */
 type Part<Name extends string, Value> = [Value] extends [undefined]
   ? unknown
-  : Record<never, never> extends Value
+  : Empty extends Value
     ? { [key in Name]?: Value }
     : { [key in Name]: Value }
 
 /** The input may be left out when nothing in it is required. */
-type Arguments<Input> = Record<never, never> extends Input ? [input?: Input] : [input: Input]
+type Arguments<Input> = Empty extends Input ? [input?: Input] : [input: Input]
 
 export interface Client {
   /** Calls an endpoint of the contract and gives its parsed answer. Throws `ApiProblem` and nothing else. */
-  call<E extends Endpoint>(endpoint: E, ...input: Arguments<CallInput<E>>): Promise<z.output<E['response']>>
-  /** Trades the refresh cookie for a new session; calls made at once share one request. */
-  refresh(): Promise<Session>
+  call: <E extends Endpoint>(endpoint: E, ...input: Arguments<CallInput<E>>) => Promise<z.output<E['response']>>
+  /** Trades the refresh cookie for a new session, null where nobody is signed in; calls made at once share one request. */
+  refresh(): Promise<Session | null>
   /** Sets or forgets the access token, which lives in memory alone. */
   setToken(token: string | null): void
   /** Called when a session could not be renewed: the person has to sign in again. */
@@ -50,7 +53,7 @@ interface LooseInput {
 /** Makes the page's HTTP client. */
 export function createClient(deps: ClientDeps): Client {
   let token: string | null = null
-  let refreshing: Promise<Session> | undefined
+  let refreshing: Promise<Session | null> | undefined
   let signedOut: () => void = () => undefined
 
   async function send(endpoint: Endpoint, input: LooseInput): Promise<Response> {
@@ -70,19 +73,23 @@ export function createClient(deps: ClientDeps): Client {
     })
   }
 
-  async function callOnce<E extends Endpoint>(endpoint: E, input: LooseInput): Promise<z.output<E['response']>> {
+  async function callOnce<E extends Endpoint>(
+    endpoint: E,
+    input: LooseInput,
+  ): Promise<z.output<E['response']>> {
     const response = await send(endpoint, input)
     if (!response.ok) throw await problemOf(response)
     const answer = response.status === 204 ? undefined : await jsonOf(response)
     const parsed = z.safeParse<E['response']>(endpoint.response, answer)
-    if (!parsed.success) throw new ApiProblem('unreadable', response.status, undefined, { cause: parsed.error })
+    if (!parsed.success)
+      throw new ApiProblem('unreadable', response.status, undefined, { cause: parsed.error })
     return parsed.data
   }
 
-  function refresh(): Promise<Session> {
+  function refresh(): Promise<Session | null> {
     refreshing ??= call(sessionEndpoints.refresh)
       .then((session) => {
-        token = session.token
+        token = session?.token ?? null
         return session
       })
       .finally(() => {
@@ -97,16 +104,22 @@ export function createClient(deps: ClientDeps): Client {
   ): Promise<z.output<E['response']>> {
     const sent: LooseInput = input ?? {}
     return callOnce(endpoint, sent).catch(async (error: unknown) => {
-      if (!(error instanceof ApiProblem) || error.kind !== 'signed-out' || endpoint.access.kind === 'public') {
+      if (
+        !(error instanceof ApiProblem) ||
+        error.kind !== 'signed-out' ||
+        endpoint.access.kind === 'public'
+      ) {
         throw error
       }
-      await refresh().catch((cause: unknown) => {
-        if (cause instanceof ApiProblem && cause.kind === 'signed-out') {
-          token = null
-          signedOut()
-        }
+      const session = await refresh().catch((cause: unknown) => {
+        if (cause instanceof ApiProblem && cause.kind === 'signed-out') return null
         throw cause
       })
+      if (session === null) {
+        token = null
+        signedOut()
+        throw error
+      }
       return callOnce(endpoint, sent)
     })
   }
@@ -152,5 +165,7 @@ async function problemOf(response: Response): Promise<ApiProblem> {
   const body: unknown = await response.json().catch(() => undefined)
   const problem = Problem.safeParse(body)
   const kind = problemKind(response.status)
-  return problem.success ? new ApiProblem(kind, response.status, problem.data) : new ApiProblem(kind, response.status)
+  return problem.success
+    ? new ApiProblem(kind, response.status, problem.data)
+    : new ApiProblem(kind, response.status)
 }

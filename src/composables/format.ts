@@ -71,7 +71,7 @@ export interface FormatOptions {
   /** The present, for telling today's times from others. */
   now(): number
   /** Words of the person's language, by key. */
-  words(key: string, values?: Record<string, string | number>): string
+  words: (key: string, values?: Record<string, string | number>) => string
 }
 
 const minute = 60_000

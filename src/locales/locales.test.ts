@@ -37,7 +37,8 @@ describe('flatten', () => {
 
 function flatten(texts: object, prefix = ''): Map<string, string> {
   const found = new Map<string, string>()
-  for (const [key, value] of Object.entries(texts)) {
+  const entries: [string, unknown][] = Object.entries(texts)
+  for (const [key, value] of entries) {
     if (typeof value === 'string') found.set(prefix + key, value)
     else if (typeof value === 'object' && value !== null) {
       for (const [path, text] of flatten(value, `${prefix}${key}.`)) found.set(path, text)

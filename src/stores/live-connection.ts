@@ -42,7 +42,10 @@ const silenceMs = 45_000
 const answerMs = 10_000
 
 /** A WebSocket that comes back: ticket, hello, welcome; then messages until it is lost, then again after a while. */
-export function createLiveConnection(deps: ConnectionDeps, probe: () => ClientMessage | null): LiveConnection {
+export function createLiveConnection(
+  deps: ConnectionDeps,
+  probe: () => ClientMessage | null,
+): LiveConnection {
   let wanted = false
   let up = false
   let attempt = 0

@@ -35,10 +35,14 @@ export function tracesFrom(traces: readonly Trace[]): Traces {
  * The lines with new readings in them, in time order, thinned to one point in twenty seconds (with the extremes of
  * the step) and cut to twelve hours. Late readings go where they belong. Nothing in `traces` is touched.
  */
-export function extendTraces(traces: Traces, readings: readonly ReadingTuple[], options: TraceOptions): Traces {
+export function extendTraces(
+  traces: Traces,
+  readings: readonly ReadingTuple[],
+  options: TraceOptions,
+): Traces {
   if (readings.length === 0) return traces
   const next = new Map(traces)
-  for (const [channelId, own] of Map.groupBy(readings, ([id]) => id)) {
+  for (const [channelId, own] of byChannel(readings)) {
     const draft = copyOf(next.get(channelId) ?? emptyTrace(channelId))
     const gapMs = options.gapMs(channelId)
     let late = false
@@ -52,6 +56,17 @@ export function extendTraces(traces: Traces, readings: readonly ReadingTuple[], 
     next.set(channelId, cut(late ? withGaps(draft, gapMs) : draft, options.now))
   }
   return next
+}
+
+function byChannel(readings: readonly ReadingTuple[]): Map<number, ReadingTuple[]> {
+  const groups = new Map<number, ReadingTuple[]>()
+  for (const reading of readings) {
+    const [id] = reading
+    const group = groups.get(id)
+    if (group === undefined) groups.set(id, [reading])
+    else group.push(reading)
+  }
+  return groups
 }
 
 function emptyTrace(channelId: number): ChannelTrace {

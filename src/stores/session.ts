@@ -25,7 +25,9 @@ export const useSession = defineStore('session', () => {
   function restore(): Promise<void> {
     restoring ??= client
       .refresh()
-      .then(take)
+      .then((session) => {
+        if (session !== null) take(session)
+      })
       .catch((error: unknown) => {
         const none = error instanceof ApiProblem && error.kind !== 'offline' && error.kind !== 'server'
         if (!none) {

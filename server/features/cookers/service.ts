@@ -16,7 +16,7 @@ export interface CookerDeps {
 }
 
 /** Who changes something, and where. */
-interface By {
+export interface By {
   person: Person
   site: SiteContext
 }

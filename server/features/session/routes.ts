@@ -25,9 +25,11 @@ export function sessionRoutes(mount: Mount, router: Router, deps: SessionRouteDe
   router.post(sessionEndpoints.signIn.path, ...signInLimit(limit))
   mount(sessionEndpoints.signIn, async ({ body, response }) => giving(response, await sessions.signIn(body)))
 
-  mount(sessionEndpoints.refresh, async ({ request, response }) =>
-    giving(response, await sessions.refresh(cookie.read(request))),
-  )
+  mount(sessionEndpoints.refresh, async ({ request, response }) => {
+    const token = cookie.read(request)
+    // Every visitor's page asks this once: nobody being signed in is an answer, not an error.
+    return token === undefined ? null : giving(response, await sessions.refresh(token))
+  })
 
   mount(sessionEndpoints.signOut, async ({ request, response }) => {
     await sessions.signOut(cookie.read(request))

@@ -63,8 +63,8 @@ export function createSessionService({ db, clock, tokenKey, passwordCost }: Sess
     },
 
     /** @throws HttpProblem 401 when the token is unknown, too old or no longer good */
-    async refresh(token: string | undefined): Promise<Signed> {
-      const next = token === undefined ? undefined : await db.transaction((trx) => useToken(trx, token))
+    async refresh(token: string): Promise<Signed> {
+      const next = await db.transaction((trx) => useToken(trx, token))
       const user = next && (await sessions.user(next.userId))
       if (!user) throw unauthorized('Your session has ended. Sign in again.')
       return signedIn(user, next.token)

@@ -1,6 +1,6 @@
 import type { PieceStage } from '@/shared/contract/piece.ts'
 import type { Phase } from '@/shared/domain/cooking.ts'
-import type { Urgency } from '@/shared/domain/pit-state.ts'
+import type { PitBand, Urgency } from '@/shared/domain/pit-state.ts'
 import type { NoForecastReason } from '@/shared/forecast/types.ts'
 
 /** A point of a line: ms since 1970 UTC and °C; null is a gap. */
@@ -62,11 +62,17 @@ export interface LanePiece {
   doneAt: number | null
 }
 
-/** A pit as a lane draws it. */
+/** Which band held from a moment on; null where it is not known, as for a cooker that is gone. */
+export interface BandSpan {
+  from: number
+  band: PitBand | null
+}
+
+/** A pit as a lane draws it; on a piece's page the pits it stood in, one after the other. */
 export interface LanePit {
   line: Line
-  bandLowC: number
-  bandHighC: number
+  /** Oldest first. */
+  bands: readonly BandSpan[]
   silentSince: number | null
 }
 

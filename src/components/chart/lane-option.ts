@@ -47,7 +47,8 @@ export function laneOption(input: {
   const labels = single ?? foldedLabels(data, frame, style, say)
   const drawn = folded ? [] : cooking
   const fanned = folded ? endsOf(cooking) : cooking
-  const rules = ruleShapes(cooking, frame, style, say)
+  // On its own page a piece keeps its rules when it is done.
+  const rules = ruleShapes(style.scale ? data.pieces : cooking, frame, style, say)
   const paint = (z: number) => ({ z, fontFamily: style.fontFamily })
 
   return {

@@ -83,8 +83,7 @@ describe('fan', () => {
 describe('pit ribbon', () => {
   const pit = (c: (hours: number) => number) => ({
     line: lineOf(0, 4 * hour, c),
-    bandLowC: 110,
-    bandHighC: 130,
+    bands: [{ from: -Infinity, band: { bandLowC: 110, bandHighC: 130 } }],
     silentSince: null,
   })
 

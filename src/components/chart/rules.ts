@@ -107,11 +107,7 @@ function labelBox(
     const box = { x, y: y - size.height / 2, ...size }
     if (!taken.some((other) => overlaps(box, other))) places.push(box)
   }
-  return (
-    places.find((box) => !lane.pieces.some((piece) => runsThrough(piece, box, lane.frame))) ??
-    places[0] ??
-    null
-  )
+  return places.find((box) => !lane.pieces.some((piece) => runsThrough(piece, box, lane.frame))) ?? null
 }
 
 function runsThrough(piece: LanePiece, box: Box, frame: LaneFrame): boolean {

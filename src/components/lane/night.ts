@@ -158,8 +158,7 @@ function laneData(
         ? null
         : {
             line: lineFrom(traces.get(cooker.pitChannelId), window.from),
-            bandLowC: cooker.bandLowC,
-            bandHighC: cooker.bandHighC,
+            bands: [{ from: -Infinity, band: cooker }],
             silentSince: pit.kind === 'silent' ? (pit.lastAt ?? window.from) : null,
           },
     pieces: drawn,

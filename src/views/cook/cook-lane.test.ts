@@ -1,6 +1,7 @@
 import { describe, expect, it } from 'vitest'
 import { cookingPiece, fixtureNow, laneOf } from '@/components/chart/testing/lane-fixture.ts'
-import { carriedOn, cookWindow, readCook, readingRows } from './cook-lane.ts'
+import type { CookEvent } from '@/shared/contract/event.ts'
+import { bandSpans, carriedOn, cookWindow, readCook, readingRows } from './cook-lane.ts'
 
 const hour = 3_600_000
 const minute = 60_000
@@ -65,5 +66,44 @@ describe('reading a cook', () => {
     expect(rows).toHaveLength(8)
     expect((rows[0]?.at ?? 0) - (rows[1]?.at ?? 0)).toBe(15 * minute)
     expect((rows[0]?.at ?? 1) % (15 * minute)).toBe(0)
+  })
+})
+
+describe('bandSpans', () => {
+  const event = (id: string, fact: CookEvent['fact'], change: Partial<CookEvent> = {}): CookEvent => ({
+    id,
+    pieceId: 1,
+    cookerId: null,
+    happenedAt: '2026-12-01T20:00:00.000Z',
+    recordedAt: '2026-12-01T20:00:00.000Z',
+    by: null,
+    fact,
+    note: null,
+    correctsId: null,
+    correctedById: null,
+    ...change,
+  })
+  const cookers = new Map([
+    [1, { bandLowC: 110, bandHighC: 130 }],
+    [5, { bandLowC: 60, bandHighC: 70 }],
+  ])
+
+  it('follows the piece from cooker to cooker', () => {
+    const spans = bandSpans(
+      [
+        event('a', { kind: 'on', cookerId: 1 }),
+        event('b', { kind: 'moved', toCookerId: 9 }, { happenedAt: '2026-12-01T22:00:00.000Z' }),
+        event('c', { kind: 'hold', cookerId: 5 }, { happenedAt: '2026-12-02T06:00:00.000Z' }),
+        event('d', { kind: 'hold' }),
+      ],
+      cookers,
+    )
+    expect(spans.map(({ band }) => band?.bandLowC ?? null)).toEqual([110, null, 60])
+  })
+
+  it('leaves out what was taken back', () => {
+    expect(
+      bandSpans([event('a', { kind: 'moved', toCookerId: 5 }, { correctedById: 'b' })], cookers),
+    ).toEqual([])
   })
 })

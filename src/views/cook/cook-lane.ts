@@ -1,5 +1,7 @@
-import type { LaneData, LanePiece, Line } from '@/components/chart/lane-data.ts'
+import type { BandSpan, LaneData, LanePiece, Line } from '@/components/chart/lane-data.ts'
 import type { Phase } from '@/shared/domain/cooking.ts'
+import type { CookEvent } from '@/shared/contract/event.ts'
+import type { PitBand } from '@/shared/domain/pit-state.ts'
 import type { Trace } from '@/shared/contract/reading.ts'
 import type { ChannelTrace } from '@/stores/live-types.ts'
 import { valueAt } from '@/components/chart/piece-lines.ts'
@@ -19,6 +21,22 @@ export function carriedOn(fetched: Trace | null | undefined, live: ChannelTrace 
     })
   }
   return points
+}
+
+/**
+ * The bands of the pits a piece stood in, one after the other, from what is logged. A cooker that is not there any
+ * more has no band that could be drawn; bands are those the cookers have now.
+ */
+export function bandSpans(
+  events: readonly CookEvent[],
+  cookers: ReadonlyMap<number, PitBand> | undefined,
+): BandSpan[] {
+  return events.flatMap(({ fact, happenedAt, correctedById }): BandSpan[] => {
+    if (correctedById !== null) return []
+    const cookerId = fact.kind === 'moved' ? fact.toCookerId : 'cookerId' in fact ? fact.cookerId : undefined
+    if (cookerId === undefined) return []
+    return [{ from: Date.parse(happenedAt), band: cookers?.get(cookerId) ?? null }]
+  })
 }
 
 /**

@@ -1,7 +1,7 @@
 import { useQuery, useQueryClient } from '@tanstack/vue-query'
 import { computed, watch, type ComputedRef } from 'vue'
 import { call } from '@/api/client.ts'
-import type { LaneData, LanePiece } from '@/components/chart/lane-data.ts'
+import type { BandSpan, LaneData, LanePiece } from '@/components/chart/lane-data.ts'
 import { eventMarks } from '@/components/lane/lane-marks.ts'
 import { lanePiece, moment } from '@/components/lane/lane-piece.ts'
 import type { Cooker } from '@/shared/contract/cooker.ts'
@@ -12,7 +12,7 @@ import { readingEndpoints } from '@/shared/contract/reading.ts'
 import type { Service } from '@/shared/contract/site.ts'
 import type { Phase } from '@/shared/domain/cooking.ts'
 import type { LiveSite } from '@/stores/live-types.ts'
-import { carriedOn, cookWindow } from './cook-lane.ts'
+import { bandSpans, carriedOn, cookWindow } from './cook-lane.ts'
 
 export interface Cook {
   readonly failed: ComputedRef<unknown>
@@ -94,6 +94,7 @@ export function useCook(pieceId: ComputedRef<number>, live: LiveSite): Cook {
         cooker.value,
         live,
         carriedOn(trace.data.value?.pit, liveLine(cooker.value?.pitChannelId, current, live)),
+        bandSpans(events.value, live.tonight.value?.cookers),
       ),
       pieces: [drawnPiece],
       marks: eventMarks(events.value),
@@ -138,17 +139,17 @@ function liveLine(channelId: number | null | undefined, piece: Piece, live: Live
   return live.traces.value.get(channelId)
 }
 
-function pitOf(cooker: Cooker | undefined, live: LiveSite, line: LanePiece['line']): LaneData['pit'] {
-  if (cooker === undefined || line.length === 0) return null
-  const { pitChannelId } = cooker
+function pitOf(
+  cooker: Cooker | undefined,
+  live: LiveSite,
+  line: LanePiece['line'],
+  bands: readonly BandSpan[],
+): LaneData['pit'] {
+  if (line.length === 0) return null
+  const pitChannelId = cooker?.pitChannelId ?? null
   const silent = pitChannelId !== null && live.staleOf(pitChannelId)
   const lastAt = pitChannelId === null ? undefined : live.tonight.value?.latest.get(pitChannelId)?.at
-  return {
-    line,
-    bandLowC: cooker.bandLowC,
-    bandHighC: cooker.bandHighC,
-    silentSince: silent ? (lastAt ?? null) : null,
-  }
+  return { line, bands, silentSince: silent ? (lastAt ?? null) : null }
 }
 
 function serviceOf(piece: Piece | undefined, live: LiveSite): Service | undefined {

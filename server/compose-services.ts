@@ -55,6 +55,10 @@ export function composeServices({
 
   const deviceBook = createDeviceBook({ db, clock })
   const deviceStates = createDeviceStates({ db, publish, log })
+  // A piece or a cooker that changed may have got a probe, or have lost it to another.
+  bus.subscribe((site, { pieces, cookers }) => {
+    if (pieces?.length || cookers?.length) void deviceStates.tellPlaces(site)
+  })
   const devices = createDeviceService({ ...common, book: deviceBook })
   const ingest = createIngest({
     db: ingestDb,

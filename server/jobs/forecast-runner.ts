@@ -121,9 +121,9 @@ function withoutProbe(record: CookRecord, now: number): Forecast {
     atS: (now - record.onAt) / 1000,
     phase: record.wraps.length > 0 ? 'wrapped' : 'rise',
     wrap: null,
-    wrapReason: 'too-little-data',
+    wrapReason: 'no-probe',
     pull: null,
-    pullReason: 'too-little-data',
+    pullReason: 'no-probe',
     fan: [],
   }
 }

@@ -28,7 +28,10 @@ type Arguments<Input> = Empty extends Input ? [input?: Input] : [input: Input]
 
 export interface Client {
   /** Calls an endpoint of the contract and gives its parsed answer. Throws `ApiProblem` and nothing else. */
-  call: <E extends Endpoint>(endpoint: E, ...input: Arguments<CallInput<E>>) => Promise<z.output<E['response']>>
+  call: <E extends Endpoint>(
+    endpoint: E,
+    ...input: Arguments<CallInput<E>>
+  ) => Promise<z.output<E['response']>>
   /** Trades the refresh cookie for a new session, null where nobody is signed in; calls made at once share one request. */
   refresh(): Promise<Session | null>
   /** Sets or forgets the access token, which lives in memory alone. */

@@ -169,8 +169,8 @@ describe('forecasts', () => {
     expect(await forecastOf(bare)).toMatchObject({
       wrap: null,
       pull: null,
-      wrapReason: 'too-little-data',
-      pullReason: 'too-little-data',
+      wrapReason: 'no-probe',
+      pullReason: 'no-probe',
       fan: [],
     })
     await log(bare, { kind: 'sliced' })

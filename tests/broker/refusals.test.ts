@@ -100,7 +100,7 @@ describe('what cannot be stored is acknowledged, kept with its reason, and harms
   test.each([
     ['broken JSON', '[{"n":"1","u":"Cel","v":63.', 'not-json', 'JSON'],
     ['no SenML', '{"temperature":63}', 'not-senml', 'a pack is a list of records'],
-    ['an empty pack', '[]', 'not-senml', '1 to 2000 records'],
+    ['an empty pack', '[]', 'not-senml', '1 to 3000 records'],
     ['a name with a blank', [{ n: 'pit one', u: 'Cel', v: 1 }], 'not-senml', 'pit one'],
     ['an unknown channel', [record(77, 63)], 'unknown-channel', '77'],
     ['an unknown unit', [{ n: '1', u: 'degF', v: 63 }], 'unknown-unit', 'degF'],

@@ -50,6 +50,7 @@ export async function openPage(
     locale: options.locale ?? 'en-US',
   })
   const page = await context.newPage()
+  page.setDefaultTimeout(12_000)
   return watch(page)
 }
 
@@ -70,19 +71,19 @@ export function watch(page: Page): WatchedPage {
 }
 
 /** Fails with each accessibility violation that axe finds on the page as it stands (WCAG 2.2 A and AA, best practice). */
-export async function expectAccessible(page: Page): Promise<void> {
+export async function expectAccessible(page: Page, where = page.url()): Promise<void> {
   const { violations } = await new AxeBuilder({ page }).analyze()
   const told = violations.map(
     (violation) =>
       `${violation.id}: ${violation.help} at ${violation.nodes.map((node) => node.target.join(' ')).join(' | ')}`,
   )
-  expect(told).toEqual([])
+  expect(told, where).toEqual([])
 }
 
 /** Fails when something sticks out of the page to the side. */
-export async function expectNoSidewaysScroll(page: Page): Promise<void> {
+export async function expectNoSidewaysScroll(page: Page, where = page.url()): Promise<void> {
   const [content, frame] = await page.evaluate<[number, number]>(
     '[document.documentElement.scrollWidth, document.documentElement.clientWidth]',
   )
-  expect(content).toBeLessThanOrEqual(frame)
+  expect(content, where).toBeLessThanOrEqual(frame)
 }

@@ -1,4 +1,5 @@
 import { randomUUID } from 'node:crypto'
+import { fileURLToPath } from 'node:url'
 import type { MqttClient } from 'mqtt'
 import { systemClock } from '#shared/domain/clock.ts'
 import { connectDevice, publish, record, topicOf } from '../broker/devices.ts'
@@ -22,7 +23,7 @@ export async function startNight(): Promise<Night> {
   const server = await startTestServer({
     mqtt: { host: '127.0.0.1', port: 0 },
     jobs: {},
-    clientDir: 'dist/client',
+    clientDir: fileURLToPath(new URL('../../dist/client', import.meta.url)),
   })
   const { own, recipes } = server.house
   const [pitChannel, coreChannel] = own.device.channelIds

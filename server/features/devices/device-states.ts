@@ -1,11 +1,14 @@
 import type { Knex } from 'knex'
 import type { Logger } from 'pino'
+import type { Device } from '#shared/contract/device.ts'
 import type { LiveChanges } from '#shared/contract/live.ts'
 import { deviceRepository, type DeviceState } from './repository.ts'
 
 export interface DeviceStates {
   /** Notes what is new of a device; it is written with that of the others, half a second later. */
   note: (deviceId: number, state: Partial<Omit<DeviceState, 'deviceId'>>) => void
+  /** Pushes a site's devices where a probe of theirs was placed or taken out. */
+  tellPlaces: (siteSlug: string) => Promise<void>
   /** Writes what is still unwritten. */
   stop: () => Promise<void>
 }
@@ -60,26 +63,35 @@ export function createDeviceStates({
     )
     if (visible.length === 0) return
     const devices = await repository.withIds(visible.map(({ deviceId }) => deviceId))
+    pushNews(devices)
+  }
+
+  function pushNews(devices: readonly Device[]): void {
     const news = devices.filter(isNews)
     for (const site of new Set(news.map((device) => device.site))) {
       publish(site, { devices: news.filter((device) => device.site === site) })
     }
   }
 
-  function isNews(device: {
-    id: number
-    connection: string
-    batteryPercent: number | null
-    signalDbm: number | null
-  }) {
-    const face = `${device.connection} ${device.batteryPercent ?? ''} ${device.signalDbm ?? ''}`
-    const isNew = told.get(device.id) !== face
-    told.set(device.id, face)
+  function isNews({ id, connection, batteryPercent, signalDbm, channels }: Device): boolean {
+    const places = channels.map(({ placedIn }) => (placedIn ? `${placedIn.kind} ${placedIn.id}` : ''))
+    const face = [connection, batteryPercent, signalDbm, ...places].join()
+    const isNew = told.get(id) !== face
+    told.set(id, face)
     return isNew
+  }
+
+  async function tellPlaces(siteSlug: string): Promise<void> {
+    try {
+      pushNews(await repository.ofSiteNamed(siteSlug))
+    } catch (error) {
+      log.debug({ err: error }, 'Where probes are could not be told; the next snapshot has it')
+    }
   }
 
   return {
     note,
+    tellPlaces,
     stop: async () => {
       stopped = true
       clearTimeout(timer)

@@ -71,7 +71,7 @@ export type DeviceRepository = ReturnType<typeof deviceRepository>
 /** Devices, their channels, secrets and state. */
 export function deviceRepository(db: Knex) {
   const devicesWhere = async (
-    condition: { siteId: number } | { ids: readonly number[] },
+    condition: { siteId: number } | { siteSlug: string } | { ids: readonly number[] },
   ): Promise<Device[]> => {
     const query = db('devices as d')
       .join('sites as s', 's.id', 'd.site_id')
@@ -88,6 +88,7 @@ export function deviceRepository(db: Knex) {
       )
       .orderBy(['d.name', 'd.id'])
     if ('ids' in condition) void query.whereIn('d.id', condition.ids)
+    else if ('siteSlug' in condition) void query.where('s.slug', condition.siteSlug)
     else void query.where('d.site_id', condition.siteId)
     const rows: unknown = await query
     const devices = z.array(DeviceRow).parse(rows)
@@ -122,6 +123,8 @@ export function deviceRepository(db: Knex) {
 
   return {
     ofSite: (siteId: number): Promise<Device[]> => devicesWhere({ siteId }),
+
+    ofSiteNamed: (siteSlug: string): Promise<Device[]> => devicesWhere({ siteSlug }),
 
     withIds: (ids: readonly number[]): Promise<Device[]> => devicesWhere({ ids }),
 

@@ -9,6 +9,7 @@ export interface PieceSources {
   trace: Pick<ChannelTrace, 'at' | 'c'> | undefined
   latest: LatestValue | undefined
   freshness: Freshness | undefined
+  now: number
   forecast: LatestForecast | undefined
   /** The name of the sibling it goes by. */
   follows: string | null
@@ -33,7 +34,7 @@ export function lanePiece(piece: Piece, sources: PieceSources): LanePiece {
     probed: piece.channelId !== null,
     follows: piece.channelId === null ? sources.follows : null,
     latest: latest === undefined || (onAt !== null && latest.at < onAt) ? null : latest,
-    silentSince: cooking && freshness?.stale === true ? (latest?.at ?? onAt) : null,
+    silentSince: cooking && freshness?.stale === true ? silentSince(latest, onAt, sources.now) : null,
     fan: cooking ? (forecast?.fan ?? []).map((slice) => ({ ...slice, at: Date.parse(slice.at) })) : [],
     wrap: piece.stage === 'cooking' && piece.wrapMethod !== 'none' ? reach(forecast?.wrap ?? null) : null,
     pull: cooking ? pull : null,
@@ -44,6 +45,20 @@ export function lanePiece(piece: Piece, sources: PieceSources): LanePiece {
     holdAt: moment(piece.holdAt),
     doneAt: moment(piece.doneAt),
   }
+}
+
+/** A probe that was just put in is not silent yet: it is given this long to say something. */
+export const firstWordMs = 2 * 60_000
+
+/** Since when nothing was heard from a piece: before it went on, its probe had nothing to say of it. */
+export function silentSince(
+  latest: { at: number } | undefined,
+  onAt: number | null,
+  now: number,
+): number | null {
+  const since = Math.max(latest?.at ?? -Infinity, onAt ?? -Infinity)
+  const waiting = onAt !== null && since === onAt && now - onAt < firstWordMs
+  return Number.isFinite(since) && !waiting ? since : null
 }
 
 /** A channel's line, from the moment the piece went on: before that the probe was elsewhere. */

@@ -176,6 +176,25 @@ describe('nightOf', () => {
     expect(lanes[0]?.data.pieces[0]?.silentSince).toBe(now)
   })
 
+  it('does not call a probe silent that was just put in', () => {
+    const fresh = piece(1, { onAt: instant(now - minute) })
+    const old = state({ pieces: [fresh] })
+    const tonight = {
+      ...old,
+      latest: new Map([...old.latest, [101, { at: now - 40 * hour, c: 20 }] as const]),
+    }
+    const { actions, lanes } = night(tonight, [101])
+    expect(actions.some(({ kind }) => kind === 'check-probe')).toBe(false)
+    expect(lanes[0]?.data.pieces[0]).toMatchObject({ silentSince: null, latest: null })
+    const later = nightOf({
+      tonight,
+      traces: new Map(),
+      now: now + 5 * minute,
+      freshnessOf: () => ({ stale: true, why: 'channel', ageMs: 1 }),
+    })
+    expect(later.lanes[0]?.data.pieces[0]?.silentSince).toBe(now - minute)
+  })
+
   it('names a device once when all that hangs on it is silent', () => {
     const devices = [device([10, 101])]
     const whole = night(state({ devices }), [10, 101]).actions.filter(({ kind }) => kind === 'check-probe')

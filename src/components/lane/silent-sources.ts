@@ -3,6 +3,7 @@ import type { Device } from '@/shared/contract/device.ts'
 import type { Piece } from '@/shared/contract/piece.ts'
 import type { SilentSource } from '@/shared/domain/next-actions.ts'
 import type { Freshness, LatestValue } from '@/stores/live-types.ts'
+import { firstWordMs, moment } from './lane-piece.ts'
 
 /** A channel that something depends on tonight. */
 interface Watched {
@@ -23,6 +24,7 @@ export function silentSources(night: {
   inUse: (cookerId: number) => boolean
   freshnessOf: (channelId: number) => Freshness
   latest: ReadonlyMap<number, LatestValue>
+  now: number
 }): SilentSource[] {
   const watched = [...pitsOf(night), ...piecesOf(night)]
   const silent = watched.filter(({ channelId }) => night.freshnessOf(channelId).stale)
@@ -65,9 +67,10 @@ function pitsOf(night: { cookers: readonly Cooker[]; inUse: (cookerId: number) =
   )
 }
 
-function piecesOf(night: { pieces: readonly Piece[] }): Watched[] {
+function piecesOf(night: { pieces: readonly Piece[]; now: number }): Watched[] {
+  const justOn = (piece: Piece) => night.now - (moment(piece.onAt) ?? night.now) < firstWordMs
   return night.pieces.flatMap((piece) =>
-    piece.channelId === null || (piece.stage !== 'cooking' && piece.stage !== 'wrapped')
+    piece.channelId === null || justOn(piece) || (piece.stage !== 'cooking' && piece.stage !== 'wrapped')
       ? []
       : [{ channelId: piece.channelId, name: piece.label, pieceId: piece.id, cookerId: piece.cookerId }],
   )

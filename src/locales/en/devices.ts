@@ -29,7 +29,13 @@ export const devices = {
     lead: 'What devices sent that could not be stored, newest first.',
     none: 'Nothing was refused.',
     failed: 'The list could not be fetched.',
-    column: { at: 'Received', device: 'Device', reason: 'Why', detail: 'In detail', payload: 'What was sent' },
+    column: {
+      at: 'Received',
+      device: 'Device',
+      reason: 'Why',
+      detail: 'In detail',
+      payload: 'What was sent',
+    },
     unknownDevice: 'unknown',
     reason: {
       'not-json': 'not JSON',

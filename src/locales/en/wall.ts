@@ -36,6 +36,7 @@ export const wall = {
     below: '{by} under',
     above: '{by} over',
   },
+  holdingCaution: 'Hot holding: 135 °F (57 °C) or above by FDA Food Code 3-501.16; your local code decides.',
   asTable: 'The night as a table',
   table: 'Cookers and pieces tonight',
   column: {

@@ -20,6 +20,7 @@ export const words = {
   },
   noForecast: {
     'too-little-data': 'too little to go by yet',
+    'no-probe': 'no probe in it',
     'probe-suspect': 'the probe reads strangely',
     'probe-silent': 'the probe is silent',
     'pit-unknown': 'the pit’s temperature is not known',

@@ -29,7 +29,13 @@ export const devices = {
     lead: 'Lo que los equipos enviaron y no se pudo guardar, lo más nuevo primero.',
     none: 'No se rechazó nada.',
     failed: 'No se pudo traer la lista.',
-    column: { at: 'Recibido', device: 'Equipo', reason: 'Por qué', detail: 'En detalle', payload: 'Lo enviado' },
+    column: {
+      at: 'Recibido',
+      device: 'Equipo',
+      reason: 'Por qué',
+      detail: 'En detalle',
+      payload: 'Lo enviado',
+    },
     unknownDevice: 'desconocido',
     reason: {
       'not-json': 'no es JSON',

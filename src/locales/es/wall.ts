@@ -35,6 +35,8 @@ export const wall = {
     below: '{by} por debajo',
     above: '{by} por encima',
   },
+  holdingCaution:
+    'Reserva en caliente: 135 °F (57 °C) o más según el FDA Food Code 3-501.16; decide el código local.',
   asTable: 'La noche en una tabla',
   table: 'Ahumadores y piezas de esta noche',
   column: {

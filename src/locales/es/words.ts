@@ -25,6 +25,7 @@ export const words = {
   },
   noForecast: {
     'too-little-data': 'aún hay pocos datos',
+    'no-probe': 'sin sonda',
     'probe-suspect': 'la sonda da lecturas extrañas',
     'probe-silent': 'la sonda no envía nada',
     'pit-unknown': 'no se conoce la temperatura del ahumador',

@@ -23,7 +23,7 @@ export const SenmlRecord = z.looseObject({
 export type SenmlRecord = z.infer<typeof SenmlRecord>
 
 /** A pack: at least one record. */
-export const SenmlPack = z.array(SenmlRecord).min(1).max(2000)
+export const SenmlPack = z.array(SenmlRecord).min(1).max(3000)
 
 /** Units a device may send. */
 export const senmlUnits = ['Cel', 'Ohm', 'V', '%EL', 'dBm'] as const

@@ -39,6 +39,7 @@ export interface ReachTimes {
 /** Why a time is not forecast. Never a bare number, never silence. */
 export const noForecastReasons = [
   'too-little-data',
+  'no-probe',
   'probe-suspect',
   'probe-silent',
   'pit-unknown',

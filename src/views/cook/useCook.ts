@@ -130,6 +130,7 @@ function drawn(
     forecast: sources.forecast,
     follows: piece.followsId === null ? null : (tonight?.pieces.get(piece.followsId)?.label ?? null),
     servesAt: sources.servesAt,
+    now: live.now.value,
   })
 }
 

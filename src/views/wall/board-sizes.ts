@@ -53,7 +53,7 @@ export function boardSizes(form: 'wall' | 'desk', width: number, lanes: number):
       'next-time': far * scale,
       'next-what': body * scale,
       'next-detail': small * scale,
-      'next-pad': 14 * scale,
+      'next-pad': 12 * scale,
     }),
   }
 }

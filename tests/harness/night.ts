@@ -1,6 +1,7 @@
 import { randomUUID } from 'node:crypto'
 import { fileURLToPath } from 'node:url'
 import type { MqttClient } from 'mqtt'
+import { Piece } from '#shared/contract/piece.ts'
 import { systemClock } from '#shared/domain/clock.ts'
 import { connectDevice, publish, record, topicOf } from '../broker/devices.ts'
 import { startTestServer, type TestServer } from './server.ts'
@@ -48,7 +49,7 @@ export async function startNight(): Promise<Night> {
   await sendHistory(device, own.device.slug, now)
   return {
     ...server,
-    pieceId: Number(started.body.id),
+    pieceId: Piece.parse(started.body).id,
     report: (pitC, coreC) => publish(device, topicOf(own.device), [record(1, pitC), record(2, coreC)]),
     stop: async () => {
       await device.endAsync()

@@ -36,6 +36,4 @@ export const frame = {
     body: 'What was stored is safe. Load the page again.',
     again: 'Load again',
   },
-  reconnecting: 'No line to the server. What you see is from {time}; trying again.',
-  connecting: 'Fetching the night …',
 }

@@ -3,7 +3,6 @@ export const signIn = {
   lead: 'Every pit on one clock, and hours of warning before a piece needs hands.',
   email: 'E-mail',
   password: 'Password',
-  show: 'Show the password',
   submit: 'Sign in',
   busy: 'Signing in …',
   demo: {

@@ -46,6 +46,5 @@ export const words = {
   more: 'Show more',
   loading: 'Loading',
   none: 'none',
-  yes: 'yes',
   no: 'no',
 }

@@ -35,6 +35,4 @@ export const frame = {
     body: 'Lo guardado está a salvo. Carga la página otra vez.',
     again: 'Cargar otra vez',
   },
-  reconnecting: 'Sin línea con el servidor. Lo que ves es de las {time}; se intenta otra vez.',
-  connecting: 'Trayendo la noche …',
 }

@@ -3,7 +3,6 @@ export const signIn = {
   lead: 'Todos los ahumadores en un solo reloj, y horas de aviso antes de que una pieza pida manos.',
   email: 'Correo',
   password: 'Contraseña',
-  show: 'Mostrar la contraseña',
   submit: 'Entrar',
   busy: 'Entrando …',
   demo: {

@@ -51,6 +51,5 @@ export const words = {
   more: 'Mostrar más',
   loading: 'Cargando',
   none: 'ninguno',
-  yes: 'sí',
   no: 'no',
 }

@@ -1,8 +1,10 @@
 import { quantileSorted } from './quantiles.ts'
-import { fanStepS, type Futures } from './roll-forward.ts'
+import { courseStepS, type Futures } from './roll-forward.ts'
 import { at } from './small-matrix.ts'
 import type { FanSlice, ReachTimes } from './types.ts'
 
+/** A slice each quarter of an hour, unless that would be too many. */
+const sliceStepS = 900
 const mostSlices = 60
 
 /**
@@ -20,7 +22,7 @@ export function fanOf(
   rawPull: ReachTimes,
   saidPull: ReachTimes,
 ): FanSlice[] {
-  const stepS = fanStepS * Math.max(1, Math.ceil(saidPull.p90 / fanStepS / mostSlices))
+  const stepS = sliceStepS * Math.max(1, Math.ceil(saidPull.p90 / sliceStepS / mostSlices))
   const slices = Math.ceil(saidPull.p90 / stepS)
   const factors = futures.pullS.map((pullS) => {
     const remaining = Math.max(60, pullS - atS)
@@ -64,7 +66,7 @@ function stretchAt(remaining: number, raw: ReachTimes, said: ReachTimes): number
 }
 
 function courseAt(course: Float64Array, aheadS: number, endC: number): number {
-  const place = aheadS / fanStepS
+  const place = aheadS / courseStepS
   const below = Math.floor(place)
   const low = course[below]
   if (low === undefined) return course[course.length - 1] ?? endC

@@ -10,7 +10,8 @@ import { at, solveTransposed } from './small-matrix.ts'
 /** Median of five minutes that has stood for three: the rule comes this much after the temperature itself. */
 export const reachRuleLagS = 330
 const horizonS = 36 * 3600
-export const fanStepS = 900
+/** The drawn courses have a point each step of the model, seconds. */
+export const courseStepS = modelStepS
 
 /** Drawn futures of one piece. Times in seconds since it went on; Infinity where a target is not reached. */
 export interface Futures {
@@ -118,7 +119,6 @@ function rollOne(
   }
   if (core >= conditions.pullAtC) pullS = atS + reachRuleLagS / 2
   const fan: number[] = [core]
-  const perFan = fanStepS / modelStepS
   for (let k = 1; pullS === Infinity && k <= horizonS / modelStepS; k++) {
     if (fresh) noise[k - 1] = random.normal()
     else if (Number.isNaN(at(noise, k - 1))) noise[k - 1] = -random.normal()
@@ -137,9 +137,8 @@ function rollOne(
       if (plan?.kind === 'after-reach') wrapFromS = wrapS + plan.delayS
     }
     if (core >= conditions.pullAtC) pullS = crossedS(before, core, nowS, conditions.pullAtC) + reachRuleLagS
-    if (k % perFan === 0) fan.push(core)
+    fan.push(core)
   }
-  if (pullS < Infinity) fan.push(core)
   return { wrapS, pullS, fan: Float64Array.from(fan) }
 }
 

@@ -1,4 +1,4 @@
-import { SenmlPack, SenmlRecord, senmlUnits } from '#shared/contract/senml.ts'
+import { maxPackRecords, SenmlPack, SenmlRecord, senmlUnits } from '#shared/contract/senml.ts'
 import type { RejectionReason } from '#shared/contract/device.ts'
 import { celsiusOf, sensorAt, unitOfSensor } from '#shared/domain/sensor.ts'
 import { resolvePack, type ResolvedRecord } from '#shared/domain/senml.ts'
@@ -93,9 +93,9 @@ function parseRecords(payload: Buffer, refused: Refused[]): readonly SenmlRecord
 
 /** The slow way, for a pack with something wrong in it: record by record. */
 function parseEach(json: unknown, refused: Refused[]): readonly SenmlRecord[] {
-  if (!Array.isArray(json) || json.length === 0 || json.length > maxRecords) {
+  if (!Array.isArray(json) || json.length === 0 || json.length > maxPackRecords) {
     const detail = Array.isArray(json)
-      ? `a pack has 1 to ${maxRecords} records, this one ${json.length}`
+      ? `a pack has 1 to ${maxPackRecords} records, this one ${json.length}`
       : 'a pack is a list of records'
     refused.push({ reason: 'not-senml', detail, record: JSON.stringify(json) })
     return []
@@ -204,5 +204,4 @@ function timeText(ms: number): string {
   return Math.abs(ms) <= 8.64e15 ? new Date(ms).toISOString() : `the time ${ms / 1000}`
 }
 
-const maxRecords = 2000
 const maxRecordText = 1000

@@ -16,7 +16,9 @@ let channels: number[]
 
 beforeAll(async () => {
   test = await startTestServer({ clock })
-  test.server.services.bus.subscribe((site, changes) => told.push({ site, changes }))
+  test.server.services.bus.subscribe((site, changes) => {
+    if (changes.cookers) told.push({ site, changes })
+  })
   const { own } = test.house
   ;[offset = 0, cabinet = 0] = own.cookers.map(({ id }) => id)
   channels = own.device.channelIds

@@ -22,8 +22,11 @@ export const SenmlRecord = z.looseObject({
 })
 export type SenmlRecord = z.infer<typeof SenmlRecord>
 
+/** More short records than the largest packet holds. */
+export const maxPackRecords = 3000
+
 /** A pack: at least one record. */
-export const SenmlPack = z.array(SenmlRecord).min(1).max(3000)
+export const SenmlPack = z.array(SenmlRecord).min(1).max(maxPackRecords)
 
 /** Units a device may send. */
 export const senmlUnits = ['Cel', 'Ohm', 'V', '%EL', 'dBm'] as const

@@ -23,7 +23,7 @@ export interface LeastSquaresProblem {
   maxIterations?: number
   /** Stops when the cost falls by less than this share. */
   tolerance?: number
-  /** Damping to begin with: small where the start is good, as under a prior. */
+  /** Damping to begin with: small where the start is good, as under a prior; left out, the cautious 100. */
   damping?: number
 }
 
@@ -61,7 +61,7 @@ export function leastSquares(problem: LeastSquaresProblem): LeastSquaresFit {
   if (!Number.isFinite(cost)) throw new Error('the residuals at the start are not finite')
 
   const trialResiduals = new Float64Array(count)
-  let damping = problem.damping ?? 1
+  let damping = problem.damping ?? 100
   const scale = new Float64Array(size)
   let iterations = 0
   for (; iterations < maxIterations; iterations++) {

@@ -95,6 +95,9 @@ export function openLedger(night: DemoTonight, slug: string): Ledger {
       ...{
         stage: projection.stage,
         cookerId: projection.placements.at(-1)?.cookerId ?? null,
+        cookedOnId:
+          projection.placements.findLast(({ from }) => from < (projection.pulledAt ?? Infinity))?.cookerId ??
+          null,
         position: null,
       },
       channelId: projection.stage === 'done' ? null : entry.channelId,

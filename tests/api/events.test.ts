@@ -193,6 +193,7 @@ describe('logging on a piece', () => {
 
   it('holds on another cooker, and keeps the weights', async () => {
     const piece = await startPiece()
+    expect(piece.cookedOnId).toBe(piece.cookerId)
     await logged(onPiece(piece, { happenedAt: ago(60), fact: { kind: 'pull', by: 'temperature' } }))
     await logged(onPiece(piece, { happenedAt: ago(55), fact: { kind: 'weighed', stage: 'cooked', kg: 3.3 } }))
     await logged(onPiece(piece, { happenedAt: ago(50), fact: { kind: 'rest' } }))
@@ -200,6 +201,7 @@ describe('logging on a piece', () => {
     expect((await detailOf(piece)).piece).toMatchObject({
       stage: 'holding',
       cookerId: cooker(2),
+      cookedOnId: piece.cookedOnId,
       cookedKg: 3.3,
       trimmedKg: null,
     })

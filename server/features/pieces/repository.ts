@@ -158,6 +158,7 @@ const PieceRows = z.object({
       pull_at_c: z.number(),
       stage: PieceStage,
       cooker_id: z.number().nullable(),
+      cooked_on_id: z.number().nullable(),
       position: z.string().nullable(),
       channel_id: z.number().nullable(),
       on_at: z.date().nullable(),
@@ -176,13 +177,18 @@ type Bindings = readonly (string | number | number[])[]
 async function select(db: Knex, where: string, bindings: Bindings, rest = '', more: Bindings = []) {
   const answer: unknown = await db.raw(
     `select p.*, s.slug as site, r.slug as recipe_slug, r.name as recipe_name,
-            place.cooker_id, place.position, probe.channel_id
+            place.cooker_id, place.position, fire.cooker_id as cooked_on_id, probe.channel_id
      from pieces p
      join sites s on s.id = p.site_id
      join recipes r on r.id = p.recipe_id
      left join lateral (
        select cooker_id, position from placements where piece_id = p.id order by lower(during) desc limit 1
      ) place on true
+     left join lateral (
+       select cooker_id from placements
+       where piece_id = p.id and lower(during) < coalesce(p.pulled_at, 'infinity')
+       order by lower(during) desc limit 1
+     ) fire on true
      left join lateral (
        select channel_id from probe_placements where piece_id = p.id and upper_inf(during)
        order by lower(during) desc limit 1
@@ -209,6 +215,7 @@ async function select(db: Knex, where: string, bindings: Bindings, rest = '', mo
     pullAtC: row.pull_at_c,
     stage: row.stage,
     cookerId: row.cooker_id,
+    cookedOnId: row.cooked_on_id,
     position: row.position,
     channelId: row.channel_id,
     onAt: instant(row.on_at),

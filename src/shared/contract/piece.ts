@@ -59,6 +59,8 @@ export const Piece = z
     stage: PieceStage,
     /** The cooker it stands on, or stood on last. */
     cookerId: Id.nullable(),
+    /** The cooker it cooks on, or cooked on last before it was pulled. */
+    cookedOnId: Id.nullable(),
     position: z.string().nullable(),
     /** The probe in it now. */
     channelId: Id.nullable(),

@@ -1,16 +1,8 @@
-import { VueQueryPlugin } from '@tanstack/vue-query'
-import { createPinia } from 'pinia'
-import { createApp } from 'vue'
-import App from './App.vue'
-import './assets/base.css'
-import { createTexts } from './locales/index.ts'
-import { createAppRouter } from './router/index.ts'
-import { usePreferences } from './stores/preferences.ts'
+import { z } from 'zod'
 
-const app = createApp(App)
-app.use(createPinia())
-app.use(VueQueryPlugin)
-const texts = createTexts(usePreferences().locale)
-app.use(texts)
-app.use(createAppRouter())
-app.mount('#app')
+// The page's security policy allows no code made from text. Told so before the first schema is built, zod does not
+// even try; the application is loaded afterwards, so that no order of bundled chunks can bring a schema forward.
+z.config({ jitless: true })
+
+const { mountPage } = await import('./mount-page.ts')
+mountPage('#app')

@@ -7,6 +7,8 @@ import {
 } from 'vue-router'
 import type { Action } from '@/shared/domain/permissions.ts'
 import { useSession } from '@/stores/session.ts'
+// Not loaded when first opened: it is shown when nothing can be loaded.
+import NoServerView from '@/views/not-found/NoServerView.vue'
 import { lastSite, rememberSite } from './last-site.ts'
 
 declare module 'vue-router' {
@@ -79,6 +81,12 @@ const routes: RouteRecordRaw[] = [
     ],
   },
   {
+    path: '/no-server',
+    name: 'no-server',
+    component: NoServerView,
+    meta: { open: true, title: 'frame.title.noServer' },
+  },
+  {
     path: '/:rest(.*)*',
     name: 'not-found',
     component: () => import('@/views/not-found/NotFoundView.vue'),
@@ -95,7 +103,15 @@ export function createAppRouter(): Router {
   })
   router.beforeEach(async (to): Promise<RouteLocationRaw | boolean> => {
     const session = useSession()
-    await session.restore().catch(() => undefined)
+    const away = await session.restore().then(
+      () => false,
+      () => true,
+    )
+    // Not "signed out": nobody could be asked. The address stays, and so does the way back to it.
+    if (away && to.name !== 'no-server') {
+      return { name: 'no-server', query: { to: to.fullPath }, replace: true }
+    }
+    if (to.name === 'sign-in' && session.signedIn) return '/'
     if (to.meta.open === true) return true
     if (!session.signedIn) return { name: 'sign-in', query: to.path === '/' ? {} : { to: to.fullPath } }
     const slugs = session.sites.map((site) => site.slug)

@@ -10,6 +10,7 @@ export const frame = {
     cookers: 'Cookers',
     devices: 'Devices',
     notFound: 'Not here',
+    noServer: 'No server',
   },
   skip: 'Skip to the page',
   navigation: 'Pages',
@@ -30,6 +31,12 @@ export const frame = {
   noSite: {
     heading: 'No site yet',
     body: 'Your account is not on any site. Ask the owner to add you to one.',
+  },
+  lost: 'No line to the server since {time}. Trying again.',
+  noServer: {
+    heading: 'The server cannot be reached',
+    body: 'What the probes send is kept by the devices until it is back. This page tries again by itself.',
+    again: 'Try now',
   },
   broken: {
     heading: 'This page stopped working',

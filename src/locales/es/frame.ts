@@ -9,6 +9,7 @@ export const frame = {
     cookers: 'Ahumadores',
     devices: 'Equipos',
     notFound: 'No está aquí',
+    noServer: 'Sin servidor',
   },
   skip: 'Saltar a la página',
   navigation: 'Páginas',
@@ -29,6 +30,12 @@ export const frame = {
   noSite: {
     heading: 'Todavía no hay local',
     body: 'Tu cuenta no está en ningún local. Pide a quien es dueño que te agregue.',
+  },
+  lost: 'Sin conexión con el servidor desde las {time}. Se intenta de nuevo.',
+  noServer: {
+    heading: 'No se alcanza el servidor',
+    body: 'Los equipos guardan lo que envían las sondas hasta que vuelva. Esta página lo intenta de nuevo sola.',
+    again: 'Intentar ahora',
   },
   broken: {
     heading: 'Esta página dejó de funcionar',

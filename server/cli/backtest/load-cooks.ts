@@ -1,5 +1,6 @@
 import { readFileSync } from 'node:fs'
 import { join } from 'node:path'
+import { CsvError, parse } from 'csv-parse/sync'
 import { z } from 'zod'
 import { wrapMethods } from '#shared/domain/cooking.ts'
 import type { FinishedCook } from '#shared/forecast/finished-cook.ts'
@@ -90,6 +91,10 @@ function finished(cook: z.infer<typeof cookSchema>, readings: CookReadings): Fin
   }
 }
 
+/** A line of the file as its parser gives it. */
+const Rows = z.array(z.object({ record: z.array(z.string()), info: z.object({ lines: z.number() }) }))
+type Row = z.infer<typeof Rows>[number]
+
 /** The readings, or what is wrong with the file and on which line. */
 function loadReadings(path: string): CookReadings | string {
   let text: string
@@ -98,22 +103,27 @@ function loadReadings(path: string): CookReadings | string {
   } catch {
     return `${path}:1: the file cannot be read`
   }
-  const lines = text.split(/\r?\n/)
-  if (lines[0]?.trim() !== 'elapsed_s,pit_c,core_c')
+  let rows: Row[]
+  try {
+    rows = Rows.parse(
+      parse(text, { info: true, trim: true, relax_column_count: true, skip_empty_lines: true }),
+    )
+  } catch (error) {
+    return `${path}:${error instanceof CsvError ? String(error['lines']) : '1'}: this is not CSV`
+  }
+  const [header, ...readings] = rows
+  if (header?.record.join() !== 'elapsed_s,pit_c,core_c')
     return `${path}:1: the header is not elapsed_s,pit_c,core_c`
   const elapsedS: number[] = []
   const pitC: number[] = []
   const coreC: number[] = []
-  for (let i = 1; i < lines.length; i++) {
-    const line = lines[i] ?? ''
-    if (line.trim() === '') continue
-    const fields = line.split(',')
-    if (fields.length !== 3) return `${path}:${i + 1}: ${fields.length} fields instead of 3`
-    const numbers = fields.map((field) => (field.trim() === '' ? Number.NaN : Number(field)))
-    const broken = fields.findIndex((field, k) => field.trim() !== '' && !Number.isFinite(numbers[k]))
-    if (broken >= 0) return `${path}:${i + 1}: ${JSON.stringify(fields[broken])} is not a number`
+  for (const { record, info } of readings) {
+    if (record.length !== 3) return `${path}:${info.lines}: ${record.length} fields instead of 3`
+    const numbers = record.map((field) => (field === '' ? Number.NaN : Number(field)))
+    const broken = record.findIndex((field, k) => field !== '' && !Number.isFinite(numbers[k]))
+    if (broken >= 0) return `${path}:${info.lines}: ${JSON.stringify(record[broken])} is not a number`
     const [time = Number.NaN, pit = Number.NaN, core = Number.NaN] = numbers
-    if (Number.isNaN(time)) return `${path}:${i + 1}: elapsed_s is empty`
+    if (Number.isNaN(time)) return `${path}:${info.lines}: elapsed_s is empty`
     elapsedS.push(time)
     pitC.push(pit)
     coreC.push(core)

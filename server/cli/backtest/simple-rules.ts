@@ -1,3 +1,4 @@
+import { mean } from 'simple-statistics'
 import { at } from '#shared/forecast/small-matrix.ts'
 import type { Target } from '#shared/forecast/correction.ts'
 import type { FinishedCook } from '#shared/forecast/finished-cook.ts'
@@ -76,11 +77,13 @@ function lastHour(cook: FinishedCook, atS: number, target: Target): number | und
 }
 
 function meanByPit(history: readonly FinishedCook[], cook: FinishedCook, target: Target): number | undefined {
-  const reached = history.filter((past) => reachedOf(past, target) !== undefined)
-  const near = reached.filter(({ facts }) => Math.abs(facts.pitSetC - cook.facts.pitSetC) < 4)
+  const reached = history.flatMap((past) => {
+    const reachedS = reachedOf(past, target)
+    return reachedS === undefined ? [] : [{ reachedS, pitSetC: past.facts.pitSetC }]
+  })
+  const near = reached.filter(({ pitSetC }) => Math.abs(pitSetC - cook.facts.pitSetC) < 4)
   const used = near.length >= 3 ? near : reached
-  if (used.length === 0) return undefined
-  return used.reduce((sum, past) => sum + (reachedOf(past, target) ?? 0), 0) / used.length
+  return used.length === 0 ? undefined : mean(used.map(({ reachedS }) => reachedS))
 }
 
 function perKilogram(history: readonly FinishedCook[], cook: FinishedCook, target: Target): number {

@@ -1,3 +1,4 @@
+import { median } from 'simple-statistics'
 const windowS = 300
 const standingS = 180
 
@@ -53,8 +54,5 @@ export function createReachRule(targetsC: readonly number[]): ReachRule {
 
 /** The middle value of a short list; the mean of the two middle ones where their number is even. */
 export function medianOf(values: ArrayLike<number>): number {
-  const sorted = Float64Array.from(values).sort()
-  const half = sorted.length >> 1
-  const upper = sorted[half] ?? Number.NaN
-  return sorted.length % 2 === 1 ? upper : (upper + (sorted[half - 1] ?? Number.NaN)) / 2
+  return values.length === 0 ? Number.NaN : median(Array.from(values))
 }

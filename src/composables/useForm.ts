@@ -1,8 +1,10 @@
 import { computed, reactive, ref, shallowRef, toRaw, type ComputedRef, type Ref } from 'vue'
 import { useI18n } from 'vue-i18n'
 import type { z } from 'zod'
-import { useProblemWords } from './useProblemWords.ts'
 import { ApiProblem } from '@/api/api-problem.ts'
+import { fieldOf, issueWords } from './issue-words.ts'
+import { useFormat } from './useFormat.ts'
+import { useProblemWords } from './useProblemWords.ts'
 
 export interface FormOptions<Values extends Record<string, unknown>, Sent extends z.ZodType> {
   /** The fields as they stand when the form opens, and after `reset`. */
@@ -34,6 +36,7 @@ export function useForm<Values extends Record<string, unknown>, Sent extends z.Z
 ): Form<Values> {
   const { t } = useI18n()
   const problemWords = useProblemWords()
+  const format = useFormat()
   // A copy typed as the fields themselves: reactive() would unwrap refs that a form never holds.
   const values = reactive(options.initial()) as Values
   const start = shallowRef(JSON.stringify(options.initial()))
@@ -47,7 +50,7 @@ export function useForm<Values extends Record<string, unknown>, Sent extends z.Z
   const found = computed(() => {
     const errors: Record<string, string> = {}
     for (const issue of checked.value.error?.issues ?? [])
-      errors[String(issue.path[0])] ??= issueWords(issue, t)
+      errors[fieldOf(issue)] ??= issueWords(issue, t, format)
     return errors
   })
 
@@ -94,27 +97,5 @@ export function useForm<Values extends Record<string, unknown>, Sent extends z.Z
     pristine: computed(() => JSON.stringify(values) === start.value),
     submit,
     reset,
-  }
-}
-
-type Words = (key: string, values: Record<string, unknown>) => string
-
-/** A schema's complaint in the person's language. */
-function issueWords(issue: z.core.$ZodIssue, t: Words): string {
-  switch (issue.code) {
-    case 'invalid_type':
-      return t('errors.field.required', {})
-    case 'too_small':
-      return issue.origin === 'string' && Number(issue.minimum) <= 1
-        ? t('errors.field.required', {})
-        : t('errors.field.tooSmall', { minimum: Number(issue.minimum) })
-    case 'too_big':
-      return issue.origin === 'string'
-        ? t('errors.field.tooLong', { maximum: Number(issue.maximum) })
-        : t('errors.field.tooBig', { maximum: Number(issue.maximum) })
-    case 'invalid_format':
-      return issue.format === 'email' ? t('errors.field.email', {}) : t('errors.field.form', {})
-    default:
-      return t('errors.field.form', {})
   }
 }

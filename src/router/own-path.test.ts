@@ -5,9 +5,13 @@ it.each(['/quarry-road/tonight', '/quarry-road/pieces?which=done', '/'])('keeps 
   expect(ownPath(path)).toBe(path)
 })
 
-it.each(['//elsewhere.example/', '/\\elsewhere.example', 'https://elsewhere.example', 'javascript:x', undefined, ['/a']])(
-  'takes the front page instead of %s',
-  (path) => {
-    expect(ownPath(path)).toBe('/')
-  },
-)
+it.each([
+  '//elsewhere.example/',
+  '/\\elsewhere.example',
+  'https://elsewhere.example',
+  'javascript:x',
+  undefined,
+  ['/a'],
+])('takes the front page instead of %s', (path) => {
+  expect(ownPath(path)).toBe('/')
+})

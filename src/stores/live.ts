@@ -4,10 +4,11 @@ import { computed, onScopeDispose, shallowRef, toRef, toValue, watch, type Maybe
 import { ApiProblem } from '@/api/api-problem.ts'
 import { pageRandom } from '@/api/chance.ts'
 import { call } from '@/api/client.ts'
-import { livePath, type ReadingTuple, type ServerMessage } from '@/shared/contract/live.ts'
+import type { ReadingTuple, ServerMessage } from '@/shared/contract/live.ts'
 import { readingEndpoints } from '@/shared/contract/reading.ts'
 import { sessionEndpoints } from '@/shared/contract/session.ts'
-import { createLiveConnection, type Socket } from './live-connection.ts'
+import { createLiveConnection } from './live-connection.ts'
+import { openSocket } from './open-socket.ts'
 import { freshness, gapMsOf } from './live-freshness.ts'
 import { applyChanges, sequence, tonightFrom, type Place } from './live-reducer.ts'
 import { extendTraces, traceSpanMs, tracesFrom } from './live-traces.ts'
@@ -28,6 +29,8 @@ interface Room extends LiveRoom {
   awaiting: boolean
   /** Readings that came while the lines were being loaded; null when none are. */
   meanwhile: ReadingTuple[] | null
+  /** Frames were missed while the lines were being loaded: once they are there, they are loaded again. */
+  outdated: boolean
   cancelLeave: (() => void) | null
 }
 
@@ -150,8 +153,12 @@ export const useLiveStore = defineStore('live', () => {
   }
 
   async function loadTraces(room: Room): Promise<void> {
-    if (room.meanwhile !== null) return
+    if (room.meanwhile !== null) {
+      room.outdated = true
+      return
+    }
     room.meanwhile = []
+    room.outdated = false
     try {
       const to = new Date(present.now)
       const from = new Date(present.now - traceSpanMs)
@@ -163,9 +170,16 @@ export const useLiveStore = defineStore('live', () => {
       later(() => {
         if (rooms.get(room.site) === room) void loadTraces(room)
       }, tracesAgainMs)
+      room.outdated = false
     } finally {
       room.meanwhile = null
     }
+    await loadOutdated(room)
+  }
+
+  /** Once more, when frames were missed while the lines were on their way. */
+  async function loadOutdated(room: Room): Promise<void> {
+    if (room.outdated) await loadTraces(room)
   }
 
   return { join, leave, stop }
@@ -218,25 +232,9 @@ function newRoom(site: string): Room {
     place: null,
     awaiting: false,
     meanwhile: null,
+    outdated: false,
     cancelLeave: null,
   }
-}
-
-function openSocket(): Socket {
-  const address = new URL(livePath, window.location.href)
-  address.protocol = address.protocol === 'https:' ? 'wss:' : 'ws:'
-  const socket = new WebSocket(address)
-  const wrapped: Socket = {
-    send: (text) => socket.send(text),
-    close: () => socket.close(),
-    onopen: null,
-    onmessage: null,
-    onclose: null,
-  }
-  socket.onopen = () => wrapped.onopen?.()
-  socket.onmessage = (event: MessageEvent<unknown>) => wrapped.onmessage?.(event)
-  socket.onclose = () => wrapped.onclose?.()
-  return wrapped
 }
 
 function later(task: () => void, ms: number): () => void {

@@ -13,9 +13,11 @@ export const errors = {
   field: {
     required: 'Fill this in.',
     tooSmall: 'At least {minimum}.',
+    above: 'More than {minimum}.',
     tooBig: 'At most {maximum}.',
     tooLong: 'At most {maximum} characters.',
     email: "Write the address like name{'@'}example.com.",
+    bandOrder: 'The low end must lie below the high end.',
     form: 'Check this field.',
   },
 }

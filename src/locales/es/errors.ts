@@ -12,9 +12,11 @@ export const errors = {
   field: {
     required: 'Falta este dato.',
     tooSmall: 'Mínimo {minimum}.',
+    above: 'Más de {minimum}.',
     tooBig: 'Máximo {maximum}.',
     tooLong: 'Máximo {maximum} caracteres.',
     email: "Escribe el correo así: nombre{'@'}ejemplo.com.",
+    bandOrder: 'El límite bajo debe quedar por debajo del alto.',
     form: 'Revisa este dato.',
   },
 }

@@ -30,6 +30,8 @@ const blank: CookerFields = {
 /** The form of a cooker: sends the cooker itself, then where its pit probe hangs when that changed. */
 export function useCookerForm(cooker: Cooker | null, live: LiveSite, onSaved: (saved: Cooker) => void) {
   const site = useSite()
+  // What is stored by now: when only the probe could not be placed, trying again must not add a second cooker.
+  let stored = cooker
 
   return useForm({
     initial: (): CookerFields => (cooker ? { ...cooker, channelId: cooker.pitChannelId ?? 0 } : { ...blank }),
@@ -38,20 +40,23 @@ export function useCookerForm(cooker: Cooker | null, live: LiveSite, onSaved: (s
     }),
     schema: NewCooker,
     submit: async (fields, { channelId }) => {
-      let saved = cooker
+      let saved = stored
         ? await call(cookerEndpoints.change, {
-            params: { cookerId: cooker.id },
+            params: { cookerId: stored.id },
             body: fields,
-            ifMatch: cooker.version,
+            ifMatch: stored.version,
           })
         : await call(cookerEndpoints.add, { params: { site: site.slug.value }, body: fields })
+      stored = saved
+      live.take({ cookers: [saved] })
       if (channelId !== (saved.pitChannelId ?? 0)) {
         saved = await call(cookerEndpoints.placeProbe, {
           params: { cookerId: saved.id },
           body: { channelId: channelId === 0 ? null : channelId },
         })
+        stored = saved
+        live.take({ cookers: [saved] })
       }
-      live.take({ cookers: [saved] })
       onSaved(saved)
     },
   })

@@ -7,5 +7,5 @@ export async function signIn(page: Page, email: string, path: string): Promise<v
   await page.getByLabel('E-mail').fill(email)
   await page.getByLabel('Password', { exact: true }).fill(housePassword)
   await page.getByRole('button', { name: 'Sign in' }).click()
-  await page.waitForURL(`**${path}`)
+  await page.waitForURL((url) => url.pathname === path)
 }

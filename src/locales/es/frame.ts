@@ -5,7 +5,7 @@ export const frame = {
     tonight: 'Esta noche',
     pieces: 'Piezas',
     piece: 'Pieza',
-    start: 'Poner una pieza',
+    start: 'Empezar una pieza',
     cookers: 'Ahumadores',
     devices: 'Equipos',
     notFound: 'No está aquí',

@@ -3,7 +3,7 @@ export const pieces = {
   which: 'Qué piezas',
   open: 'Esta noche',
   done: 'Pasadas',
-  start: 'Poner una pieza',
+  start: 'Empezar una pieza',
   emptyOpen: 'No hay nada puesto. Pon una pieza cuando entre la primera.',
   emptyDone: 'Aquí todavía no se terminó ninguna pieza.',
   failed: 'No se pudo traer la lista.',

@@ -44,7 +44,7 @@ export const words = {
   save: 'Guardar',
   cancel: 'Cancelar',
   close: 'Cerrar',
-  add: 'Añadir',
+  add: 'Agregar',
   change: 'Cambiar',
   undo: 'Deshacer',
   tryAgain: 'Intentar de nuevo',

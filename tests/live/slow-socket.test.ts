@@ -36,7 +36,7 @@ beforeAll(async () => {
       }),
     clock: systemClock,
     log: pino({ level: 'silent' }),
-    limits: { frameMs: 20, heartbeatMs: 300, maxWaitingBytes: 64 * 1024, maxBehindMs: 400 },
+    limits: { frameMs: 40, heartbeatMs: 1500, maxWaitingBytes: 512 * 1024, maxBehindMs: 400 },
   })
   http.listen(0, '127.0.0.1')
   await once(http, 'listening')
@@ -71,7 +71,7 @@ test('a socket that stops reading is closed as too slow while its neighbour gets
   const slow = await join()
   const quick = await join()
   slow.socket.pause()
-  const flood = setInterval(bigFrame, 20)
+  const flood = setInterval(bigFrame, 40)
   // Kernel buffers take some megabytes first.
   await eventually(hub.connections, (count) => count === 1, 25_000)
   clearInterval(flood)

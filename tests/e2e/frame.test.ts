@@ -32,6 +32,19 @@ describe('the frame', () => {
     expect(refused).toEqual([])
   })
 
+  it('draws the picture once its code can be had, when the line was lost just then', async () => {
+    const { page } = await openPage(browser, night.url)
+    let refused = 0
+    await page.route(/LaneCanvas.*\.js/, async (route) => {
+      refused += 1
+      await (refused <= 2 ? route.abort() : route.continue())
+    })
+    await signIn(page, night.house.people.owner.email, '/quarry-road/tonight')
+    await page.getByText('North Offset').first().waitFor()
+    await page.locator('canvas').first().waitFor()
+    expect(refused).toBeGreaterThan(2)
+  })
+
   it('shows the next person nothing of what the one before was shown', async () => {
     const { page } = await openPage(browser, night.url)
     const sockets: { closed: boolean }[] = []

@@ -1,17 +1,32 @@
-import { createServer as createTcpServer, Socket, type AddressInfo, type Server } from 'node:net'
+import { createServer as createTcpServer, Socket } from 'node:net'
 import { createServer as createTlsServer } from 'node:tls'
 import type { Duplex } from 'node:stream'
-import { Aedes } from 'aedes'
+import { Aedes, type Client, type PublishPacket } from 'aedes'
 import type { Logger } from 'pino'
-import { createConnection, isOwnFilter, type Connection } from './connection.ts'
-import type { DeviceMessage, DeviceStatus, Refusal, SignedInDevice } from './device.ts'
+import { createConnection, isOwnFilter, isOwnTopic, type Connection } from './connection.ts'
+import type {
+  DeviceMessage,
+  DeviceStatus,
+  Ending,
+  LiveConnection,
+  Origin,
+  Refusal,
+  SignedInDevice,
+  Trouble,
+} from './device.ts'
+import { patienceWith, troubleOf } from './endings.ts'
+import { tooLarge } from './faults.ts'
 import { createGate, type Gate } from './gate.ts'
-import { createIntake } from './intake.ts'
+import { createIntake, type Answer } from './intake.ts'
 import { usualLimits, type BrokerLimits } from './limits.ts'
 import type { ScanFault } from './packet-scanner.ts'
+import { listen, plainAddress } from './listen.ts'
 import { createPresence } from './presence.ts'
-import { readConnect, signInConnection } from './sign-in.ts'
+import { createSessionStore } from './session-store.ts'
+import { createShortcut } from './shortcut.ts'
+import { faultOfConnect, isIllFormed, readConnect, signInConnection } from './sign-in.ts'
 import { createTokenBucket } from './token-bucket.ts'
+import { createTurns } from './turns.ts'
 
 export interface BrokerOptions {
   port: number
@@ -19,13 +34,15 @@ export interface BrokerOptions {
   /** Set: MQTT over TLS. */
   tls?: { cert: string; key: string } | undefined
   /** The device of a user name and secret; undefined when they do not belong together. */
-  signIn: (username: string, secret: string) => Promise<SignedInDevice | undefined>
+  signIn: (username: string, secret: string, origin: Origin) => Promise<SignedInDevice | undefined>
   /** Takes a message in; resolves when it is stored. Only then is it acknowledged. Rejects to have it sent again. */
   accept: (message: DeviceMessage) => Promise<unknown>
   /** A device did what it may not; its connection is closed. */
   onRefused: (refusal: Refusal) => void
-  /** A device came, went, or said so itself. */
-  onStatus: (device: SignedInDevice, status: DeviceStatus) => void
+  /** A device came or went; `connection` is its newest one. Also when that is another, while it stays online. */
+  onStatus: (device: SignedInDevice, status: DeviceStatus, connection: LiveConnection) => void
+  /** A connection ended otherwise than by its device's DISCONNECT. */
+  onTrouble?: ((trouble: Trouble) => void) | undefined
   log: Logger
   limits?: Partial<BrokerLimits> | undefined
 }
@@ -35,18 +52,22 @@ export interface Broker {
   port: number
   /** Connections of devices that are signed in. */
   clients: () => number
-  /** While pressed, nothing more is taken from any socket. */
-  press: (on: boolean) => void
+  /** While pressed, nothing more is taken from any socket; or nothing large, and the rest goes on. */
+  press: (on: boolean, what?: 'all' | 'large') => void
   /** Serves a connection that came another way, such as a WebSocket's stream. */
-  handle: (socket: Duplex) => void
-  /** Closes every connection of a device. */
-  disconnect: (deviceId: number) => void
+  handle: (socket: Duplex, origin: Origin) => void
+  /** The connections of devices that are signed in. */
+  connections: () => LiveConnection[]
+  /** Closes every connection that was made with one of these secrets, because they are good no more. */
+  endSecrets: (secretIds: ReadonlySet<number>) => void
   /** Takes nothing more, waits until what was taken is stored (up to the deadline), then closes every connection. */
   stop: (deadlineMs?: number) => Promise<void>
 }
 
 /** How often silence is counted, in ms. */
 const tickMs = 250
+/** The library's own patience with a CONNECT: the gate has ours, and some must wait for their turn. */
+const withoutEndMs = 2 ** 31 - 1
 
 /**
  * An MQTT 3.1.1 broker for devices: they sign in, publish readings and status under their own topic, and are
@@ -62,42 +83,84 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
     heldBytes: 0,
     unacknowledged: createTokenBucket(limits.unacknowledgedPerSecond, limits.unacknowledgedPerSecond / 10),
   }
-  const intake = createIntake(options)
-  const presence = createPresence((device, status) => {
+  const intake = createIntake({ ...options, limits })
+  const presence = createPresence((device, status, connection) => {
     // That the server goes says nothing of its devices.
-    if (!stopping) options.onStatus(device, status)
+    if (!stopping) options.onStatus(device, status, connection)
   })
-  let pressed = false
+  const turns = createTurns(createTokenBucket(limits.connectsPerSecond, limits.connectBurst))
+  /** Devices that have listened to their own topics; once is for ever, as a session may be kept. */
+  const listeners = new Set<number>()
+  const pressed = { all: false, large: false }
+  /** Whose turn it is when there is room again. */
+  let turn = 0
   let stopping = false
+
+  const sessions = createSessionStore({
+    ...limits,
+    prefixOf: ({ conn }) => byStream.get(conn)?.statusTopic.replace(/status$/, '') || undefined,
+    isConnected: (sessionId) => [...connections].some((one) => one.present && one.sessionId === sessionId),
+  })
 
   const aedes = await Aedes.createBroker({
     // With a bound here, a flood at QoS 0 with a subscriber overflows the emitter's stack.
     concurrency: 0,
-    connectTimeout: limits.connectTimeoutMs,
-    maxClientsIdLength: 256,
+    connectTimeout: withoutEndMs,
+    maxClientsIdLength: limits.maxClientIdBytes + 256,
     maxInflightInbound: 20,
+    persistence: sessions,
     preConnect: (client, packet, done) => {
       const connection = byStream.get(client.conn)
+      const fault = faultOfConnect(packet)
+      if (fault) {
+        done(fault, false)
+        return
+      }
       if (connection) readConnect(connection, packet)
       done(null, connection !== undefined)
     },
     authenticate: (client, username, password, done) => {
       const connection = byStream.get(client.conn)
       if (!connection) return
-      void signInConnection(connection, { username, password }, options).then((error) =>
-        done(error, error === null),
-      )
+      void signInConnection(connection, { username, password }, { ...options, limits }).then((error) => {
+        if (error) connection.ending = 'told'
+        else if (!client.closed) announceTakeover(connection)
+        done(error, error === null)
+      })
     },
     // Its callback is what an acknowledgement waits for: the library writes PUBACK before it publishes.
     authorizePublish: (client, packet, done) => {
       const connection = client ? byStream.get(client.conn) : undefined
-      if (!client?.closed) intake.publish(connection, packet, done)
-      else if (!stopping) intake.will(connection, packet, done)
-      else done(new Error('stopping'))
+      // [MQTT-3.3.1-3]: whether a device repeats itself is nothing to those who subscribe.
+      packet.dup = false
+      if (client && !client.closed) {
+        // In the same turn the library would parse on within its own parsing, and take bytes twice.
+        const later: Answer = (error) => queueMicrotask(() => done(error))
+        void publish(client, connection, packet, later)
+      } else if (stopping) done(new Error('stopping'))
+      else {
+        intake.will(connection, packet, (error) => {
+          done(error)
+          if (!error && connection) correctStatus(connection, packet.topic)
+        })
+      }
+    },
+    authorizeForward: (client, packet) => {
+      const connection = byStream.get(client.conn)
+      if (!connection || !isOwnTopic(connection, packet.topic)) return null
+      if (connection.gate.unreadBytes() <= limits.maxUnreadBytes) return packet
+      end(connection, 'not-reading')
+      return null
     },
     authorizeSubscribe: (client, subscription, done) => {
       const connection = byStream.get(client.conn)
-      done(null, connection && isOwnFilter(connection, subscription.topic) ? subscription : null)
+      if (isIllFormed(subscription.topic)) {
+        done(new Error('the filter is not well-formed text'))
+        return
+      }
+      const own = connection !== undefined && isOwnFilter(connection, subscription.topic)
+      if (own && connection.device) listeners.add(connection.device.deviceId)
+      done(null, own ? subscription : null)
     },
   })
   aedes.on('clientReady', (client) => {
@@ -105,6 +168,9 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
     if (!connection) return
     presence.arrive(connection)
     connection.gate.open()
+    const ofDevice = connection.device ? presence.of(connection.device.deviceId) : []
+    const [oldest] = ofDevice
+    if (oldest && ofDevice.length > limits.maxConnectionsPerDevice) end(oldest, 'too-many-connections')
   })
   aedes.on('clientError', (client, error) => {
     log.debug({ client: client.id, reason: error.message }, 'A device’s connection was closed')
@@ -114,15 +180,17 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
   })
   aedes.addListener('error', (error: Error) => log.error({ err: error }, 'The broker has a fault'))
 
+  const take = (socket: Socket) => {
+    handle(socket, { transport: 'mqtt', remoteAddress: plainAddress(socket.remoteAddress) })
+  }
   const server = options.tls
-    ? createTlsServer(options.tls, handle)
-    : createTcpServer({ noDelay: true }, handle)
-  await listen(server, options.port, options.host)
+    ? createTlsServer({ ...options.tls, handshakeTimeout: limits.connectTimeoutMs }, take)
+    : createTcpServer({ noDelay: true }, take)
+  const port = await listen(server, options.port, options.host)
   const ticking = setInterval(countSilence, tickMs)
-  const address = server.address()
 
-  function handle(socket: Duplex): void {
-    if (stopping || connections.size >= limits.maxConnections) {
+  function handle(socket: Duplex, origin: Origin): void {
+    if (stopping || (connections.size >= limits.maxConnections && !makeRoom())) {
       socket.on('error', () => undefined)
       socket.destroy()
       return
@@ -131,58 +199,128 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
     if (socket instanceof Socket) socket.setKeepAlive(true, 60_000)
     const gate: Gate = createGate(socket, limits, {
       together,
-      isPressed: () => pressed || stopping,
-      onFault: (fault, chunk) => refuseFault(connection.device, fault, chunk),
-      onClosed: () => {
+      isPressed: (large) => pressed.all || stopping || (large && pressed.large),
+      admit: turns.wait,
+      shortcut: createShortcut({
+        connection: () => connection,
+        intake,
+        hasListeners: (deviceId) => listeners.has(deviceId),
+      }),
+      onFault: (fault, chunk) => refuseFault(connection, fault, chunk),
+      onClosed: (error) => {
         connections.delete(connection)
+        if (connection.present) tellEnding(connection, error)
         presence.leave(connection)
       },
     })
-    const connection = createConnection(gate)
+    const connection = createConnection(gate, origin)
     connections.add(connection)
     byStream.set(gate.stream, connection)
     aedes.handle(gate.stream)
   }
 
-  function refuseFault(device: SignedInDevice | undefined, fault: ScanFault, chunk: Buffer): void {
+  /** Whoever holds a place without having signed in gives it up to a newcomer. */
+  function makeRoom(): boolean {
+    for (const { device, gate } of connections) {
+      if (device) continue
+      gate.cut()
+      return true
+    }
+    return false
+  }
+
+  function refuseFault(connection: Connection, fault: ScanFault, chunk: Buffer): void {
+    const { device } = connection
+    connection.ending = fault.kind === 'malformed' ? 'malformed' : 'told'
     if (fault.kind === 'malformed' || !device) {
       log.info({ device: device?.username, fault: fault.kind }, 'A connection was closed for what it sent')
+    } else onRefused({ device, ...tooLarge(fault, chunk, limits.maxPacketBytes) })
+  }
+
+  function end(connection: Connection, ending: Ending): void {
+    connection.ending = ending
+    connection.gate.cut()
+  }
+
+  /** Once each: under identifier 0 nothing can be acknowledged, and at QoS 2 a message comes again before its PUBREL. */
+  async function publish(
+    client: Client,
+    connection: Connection | undefined,
+    packet: PublishPacket,
+    done: Answer,
+  ): Promise<void> {
+    const { qos, messageId } = packet
+    const fault = qos > 0 && !messageId ? new Error('packet identifier 0') : null
+    if (!fault && !(qos === 2 && (await sessions.isTaken(client, messageId)))) {
+      intake.publish(connection, packet, done)
       return
     }
-    const { topic, payload } = fault.publish
-      ? beginningOfPublish(chunk.subarray(fault.bodyAt))
-      : { topic: '', payload: Buffer.alloc(0) }
-    onRefused({
-      device,
-      topic,
-      reason: 'too-large',
-      detail: `a packet of ${fault.bytes} bytes; at most ${limits.maxPacketBytes} are taken`,
-      payload,
-    })
+    connection?.gate.finished()
+    done(fault)
+  }
+
+  /** [MQTT-3.1.4-2]: the library closes the one that was there. */
+  function announceTakeover({ device, sessionId }: Connection): void {
+    for (const other of device ? presence.of(device.deviceId) : []) {
+      if (other.sessionId === sessionId) other.ending = 'taken-over'
+    }
+  }
+
+  /**
+   * A line that was lost is given up long after its device has come back under another client id; its last will must
+   * not be the last word, when the device has said since that it is there.
+   */
+  function correctStatus({ device, statusTopic }: Connection, topic: string): void {
+    const others = device ? presence.of(device.deviceId) : []
+    if (topic !== statusTopic || !others.some(({ toldStatus }) => toldStatus === 'online')) return
+    aedes.publish(
+      { cmd: 'publish', topic, payload: 'online', qos: 1, retain: true, dup: false },
+      () => undefined,
+    )
+  }
+
+  function tellEnding(connection: Connection, error: Error | null): void {
+    const trouble = stopping ? undefined : troubleOf(connection, error, limits)
+    if (trouble) options.onTrouble?.(trouble)
+  }
+
+  /** Begins where there was no more room the last time, so that all get their turn. */
+  function pumpAll(): void {
+    const all = [...connections]
+    const from = turn
+    let full = false
+    for (let count = 0; count < all.length; count++) {
+      const next = (from + count) % all.length
+      all[next]?.gate.pump()
+      if (full || !(pressed.all || pressed.large)) continue
+      full = true
+      turn = next + 1
+    }
   }
 
   /** [MQTT-3.1.2-24]: a client that is not heard for one and a half keep-alive times is disconnected. */
   function countSilence(): void {
-    for (const { gate, keepAliveMs, device } of connections) {
+    for (const connection of connections) {
       // Counted in ticks, not read from a clock: a process that was held up has not listened meanwhile.
-      const silentMs = gate.countSilence(tickMs)
-      if (keepAliveMs > 0 && silentMs > 1.5 * keepAliveMs) {
-        log.debug({ device: device?.username }, 'A device was silent beyond its keep-alive')
-        gate.cut()
-      }
+      const silentMs = connection.gate.countSilence(tickMs)
+      if (silentMs > 1.5 * patienceWith(connection, limits)) end(connection, 'silent')
     }
   }
 
   return {
-    port: isAddress(address) ? address.port : options.port,
+    port,
     clients: presence.count,
-    press: (on) => {
-      pressed = on
-      if (!on) for (const { gate } of connections) gate.pump()
+    press: (on, what = 'all') => {
+      pressed[what] = on
+      if (!on) pumpAll()
     },
     handle,
-    disconnect: (deviceId) => {
-      for (const { gate, device } of connections) if (device?.deviceId === deviceId) gate.cut()
+    connections: presence.all,
+    endSecrets: (secretIds) => {
+      for (const connection of connections) {
+        const secretId = connection.device?.secretId
+        if (secretId !== undefined && secretIds.has(secretId)) end(connection, 'secret-ended')
+      }
     },
     stop: async (deadlineMs = 10_000) => {
       if (stopping) return
@@ -192,32 +330,10 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
       // The last acknowledgements are written in the turns that follow.
       await new Promise((resolve) => setTimeout(resolve, 20))
       clearInterval(ticking)
+      turns.stop()
       await new Promise<void>((resolve) => aedes.close(resolve))
       for (const { gate } of connections) gate.stream.destroy()
       await closed
     },
   }
-}
-
-/** Topic and first bytes of a PUBLISH whose variable header begins here, as far as they are there. */
-function beginningOfPublish(body: Buffer): { topic: string; payload: Buffer } {
-  const length = body.length >= 2 ? body.readUInt16BE(0) : 0
-  return {
-    topic: body.toString('utf8', 2, 2 + length),
-    payload: body.subarray(2 + length + 2, 2 + length + 202),
-  }
-}
-
-function isAddress(address: AddressInfo | string | null): address is AddressInfo {
-  return typeof address === 'object' && address !== null
-}
-
-function listen(server: Server, port: number, host: string): Promise<void> {
-  return new Promise((resolve, reject) => {
-    server.once('error', reject)
-    server.listen(port, host, () => {
-      server.off('error', reject)
-      resolve()
-    })
-  })
 }

@@ -1,31 +1,56 @@
 import { readingsTopic, statusTopic } from '#shared/contract/mqtt.ts'
-import type { SignedInDevice } from './device.ts'
+import type { DeviceStatus, Ending, LiveConnection, Origin, SignedInDevice } from './device.ts'
 import type { Gate } from './gate.ts'
 
 /** What is known of one connection. */
 export interface Connection {
   gate: Gate
+  origin: Origin
+  /** As the device gave it. */
+  clientId: string
+  /** The same with the device's name before it: what the library knows it by. */
+  sessionId: string
+  /** It asked for a kept session without a client id. */
+  isNameless: boolean
   /** 0: the client asked for none. */
   keepAliveMs: number
-  willTopic: string | undefined
+  will: { topic: string; bytes: number } | undefined
   /** Undefined until it has signed in. */
   device: SignedInDevice | undefined
   readingsTopic: string
   statusTopic: string
   /** Counted among the connections of its device. */
   present: boolean
+  /** What it said last about its device. */
+  toldStatus: DeviceStatus | undefined
+  /** Why it is being closed; `told`: whoever has to know knows already. */
+  ending: Ending | 'told' | undefined
 }
 
-export function createConnection(gate: Gate): Connection {
+export function createConnection(gate: Gate, origin: Origin): Connection {
   return {
     gate,
+    origin,
+    clientId: '',
+    sessionId: '',
+    isNameless: false,
     keepAliveMs: 0,
-    willTopic: undefined,
+    will: undefined,
     device: undefined,
     readingsTopic: '',
     statusTopic: '',
     present: false,
+    toldStatus: undefined,
+    ending: undefined,
   }
+}
+
+/** What others are told of a connection that has signed in. */
+export function liveConnection(
+  { origin, clientId }: Pick<Connection, 'origin' | 'clientId'>,
+  device: SignedInDevice,
+): LiveConnection {
+  return { ...origin, clientId, device }
 }
 
 /** From now on it speaks for a device. */

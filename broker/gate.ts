@@ -1,5 +1,10 @@
 import { Duplex } from 'node:stream'
-import { createPacketScanner, isPublish, isUnacknowledged, type ScanFault } from './packet-scanner.ts'
+import { hangUp, writeThrough } from './carrier.ts'
+import { createHeldPackets } from './held-packets.ts'
+import { isPublishKind, kindOf, packetKind, type PacketKind } from './packet-kind.ts'
+import { createPacketScanner, type ScanFault } from './packet-scanner.ts'
+import type { PlainPublish } from './plain-publish.ts'
+import type { Shortcut } from './shortcut.ts'
 import { createTokenBucket, type TokenBucket } from './token-bucket.ts'
 
 export interface GateLimits {
@@ -15,9 +20,22 @@ export interface GateLimits {
   maxHeldTogether: number
   /** PUBLISH packets let through and not finished yet. */
   maxInFlight: number
+  /** Of a PUBLISH that counts as large, in bytes: a pack that was kept through an outage. */
+  largeBytes: number
+  /** Large ones let through and not finished yet: so the clients take turns. */
+  maxLargeInFlight: number
   /** Packets let through a second in the long run, and at once after a silence. */
   packetsPerSecond: number
   burst: number
+  /** Time for CONNECT to arrive whole, in ms. */
+  connectTimeoutMs: number
+}
+
+/** A frame of a carrier that is larger than what may be held; it was refused before it was read. */
+export class FrameTooLarge extends Error {
+  constructor(readonly fault: ScanFault) {
+    super('A frame is too large.')
+  }
 }
 
 /** A socket as the broker sees it: whole packets only, and no more of them than can be worked off. */
@@ -31,6 +49,10 @@ export interface Gate {
   pump(): void
   /** Counts time in which the client could have been heard; the sum since its last byte, in ms. */
   countSilence(ms: number): number
+  /** What waits to be read by the client, in bytes. */
+  unreadBytes(): number
+  /** Whether its last packet was DISCONNECT. */
+  saidGoodbye(): boolean
   /** Cuts the connection without waiting for anything. */
   cut(): void
 }
@@ -42,12 +64,9 @@ export interface Together {
   unacknowledged: TokenBucket
 }
 
-/** Of a packet that is held, what its passing depends on. */
-const kind = { other: 0, publish: 1, unacknowledged: 2 } as const
-type Kind = (typeof kind)[keyof typeof kind]
-
 const pingResponse = Uint8Array.from([0xd0, 0])
 const pingRequestByte = 0xc0
+const disconnectByte = 0xe0
 const maxUnreadBytes = 16 * 1024
 /** How long a client that was too quick waits, in ms. */
 const refillMs = 10
@@ -64,32 +83,42 @@ export function createGate(
   {
     together,
     isPressed,
+    admit,
+    shortcut,
     onFault,
     onClosed,
   }: {
     /** What all gates of a broker hold together. */
     together: Together
-    /** Whether nothing at all may be let through just now. */
-    isPressed: () => boolean
+    /** Whether nothing at all may be let through just now, or nothing large. */
+    isPressed: (large: boolean) => boolean
+    /** Asks for the turn of a CONNECT that has arrived; without it, it goes at once. */
+    admit?: ((go: () => void) => void) | undefined
+    /** Where the packets go that need not go through the stream. */
+    shortcut?: Shortcut | undefined
     /** The stream cannot be read on; `chunk` is what was read last. The connection is cut afterwards. */
     onFault: (fault: ScanFault, chunk: Buffer) => void
-    onClosed: () => void
+    onClosed: (error: Error | null) => void
   },
 ): Gate {
   const scanner = createPacketScanner(limits.maxPacketBytes)
-  const chunks: Buffer[] = []
-  /** Sizes and kinds of the complete packets in `chunks`; those before `first` have gone. */
-  let sizes: number[] = []
-  let kinds: Kind[] = []
-  let first = 0
-  let heldBytes = 0
+  const held = createHeldPackets(together)
   let phase: 'new' | 'connecting' | 'open' = 'new'
   let wanted = false
   let inFlight = 0
+  /** Those of them that went through the stream. */
+  let inStream = 0
+  let largeInFlight = 0
+  /** From its first SUBSCRIBE on, a client may be waiting for what it sends itself. */
+  let listens = false
   let inputEnded = false
   let silenceMs = 0
+  let pumping = false
+  let turn: 'unasked' | 'asked' | 'come' = admit ? 'unasked' : 'come'
+  let goodbye = false
   const rate = createTokenBucket(limits.packetsPerSecond, limits.burst)
   let refill: NodeJS.Timeout | undefined
+  const patience = setTimeout(cut, limits.connectTimeoutMs)
 
   const stream = new Duplex({
     readableHighWaterMark: 64 * 1024,
@@ -98,31 +127,32 @@ export function createGate(
       pump()
     },
     write: (chunk: Buffer, _encoding, done) => {
-      writeThrough(chunk, done)
+      writeThrough(socket, chunk, done)
     },
     // Acknowledgements come as many writes of few bytes: one write of many is a tenth of the work.
     writev: (writes, done) => {
       const parts = writes.map(({ chunk }) => Buffer.from(chunk))
-      writeThrough(Buffer.concat(parts), done)
+      writeThrough(socket, Buffer.concat(parts), done)
     },
     destroy: (error, done) => {
       clearTimeout(refill)
-      together.heldBytes -= heldBytes
-      heldBytes = 0
-      chunks.length = 0
-      forgetSizes()
+      clearTimeout(patience)
+      held.clear()
       if (error) socket.destroy()
       else hangUp(socket)
-      onClosed()
+      onClosed(error)
       done(error)
     },
   })
 
+  stream.on('drain', pump)
   socket.on('data', take)
   socket.on('end', endInput)
   socket.on('close', endInput)
   // What made a socket fail shows in its closing; the device comes back by itself.
-  socket.on('error', () => undefined)
+  socket.on('error', (error) => {
+    if (error instanceof FrameTooLarge && !stream.destroyed) onFault(error.fault, Buffer.alloc(0))
+  })
 
   function take(chunk: Buffer): void {
     if (stream.destroyed) return
@@ -131,13 +161,13 @@ export function createGate(
     let packetStart = 0
     const fault = scanner.scan(chunk, (end, firstByte, bytes) => {
       if (firstByte === pingRequestByte && bytes === 2 && phase === 'open' && end - packetStart === 2) {
-        hold(chunk.subarray(from, end - 2))
+        held.hold(chunk.subarray(from, end - 2))
         from = end
         // A client that asks and asks and never reads gets no answer: nothing piles up for it here.
         if (socket.writableLength < maxUnreadBytes) socket.write(pingResponse)
       } else {
-        sizes.push(bytes)
-        kinds.push(kindOf(firstByte))
+        held.note(bytes, kindOf(firstByte))
+        goodbye = firstByte === disconnectByte
       }
       packetStart = end
     })
@@ -146,58 +176,99 @@ export function createGate(
       cut()
       return
     }
-    hold(chunk.subarray(from))
+    held.hold(chunk.subarray(from))
+    if (held.count() > 0) clearTimeout(patience)
     if (holdsTooMuch()) socket.pause()
     pump()
   }
 
-  function hold(part: Buffer): void {
-    if (part.length === 0) return
-    chunks.push(part)
-    heldBytes += part.length
-    together.heldBytes += part.length
-  }
-
   function holdsTooMuch(): boolean {
+    const bytes = held.bytes()
     return (
-      heldBytes > limits.maxHeldBytes ||
-      (heldBytes > limits.minHeldBytes && together.heldBytes > limits.maxHeldTogether)
+      bytes > limits.maxHeldBytes ||
+      (bytes > limits.minHeldBytes && together.heldBytes > limits.maxHeldTogether)
     )
   }
 
   function pump(): void {
-    if (!wanted || stream.destroyed) return
-    const bytes = bytesAllowed()
-    if (bytes > 0) {
-      letThrough(bytes)
-      if (socket.isPaused() && heldBytes < limits.minHeldBytes) socket.resume()
-    } else if (inputEnded && first === sizes.length) {
-      stream.push(null)
-    }
+    if (stream.destroyed || pumping) return
+    pumping = true
+    const before = held.count()
+    held.take(passWhatMay(), (part) => (wanted = stream.push(part)))
+    pumping = false
+    const passed = held.count() !== before
+    if (passed && socket.isPaused() && held.bytes() < limits.minHeldBytes) socket.resume()
+    if (!passed && wanted && inputEnded && held.count() === 0) stream.push(null)
   }
 
-  /** How much of what is held may go on now: whole packets, within the client's rate and capacity. */
-  function bytesAllowed(): number {
-    if (phase === 'connecting' || isPressed() || first === sizes.length) return 0
-    if (phase === 'new') {
-      phase = 'connecting'
-      return sizes[first++] ?? 0
-    }
+  /**
+   * Walks what is held as far as it may go now: whole packets, within the client's rate and capacity.
+   * @returns the bytes of those that are to go into the stream
+   */
+  function passWhatMay(): number {
     let bytes = 0
-    while (first < sizes.length && mayPass(kinds[first])) bytes += sizes[first++] ?? 0
-    if (first === sizes.length) forgetSizes()
+    while (held.count() > 0 && phase !== 'connecting') {
+      const size = held.size()
+      const which = held.kind()
+      if (phase === 'new') {
+        if (!wanted || !mayConnect()) break
+        phase = 'connecting'
+        held.advance()
+        return size
+      }
+      const large = size > limits.largeBytes && isPublishKind(which)
+      if (isPressed(large) || (large && largeInFlight >= limits.maxLargeInFlight)) break
+      const short = bytes === 0 ? readShort(which) : undefined
+      if (short ? stream.writableNeedDrain : !wanted || mustWait(which)) break
+      if (!mayPass(which)) break
+      held.advance()
+      if (short && shortcut) {
+        held.discard(size)
+        if (large) largeInFlight++
+        shortcut.take(short, large ? finishedLarge : finishedOne)
+      } else {
+        bytes += size
+        if (isPublishKind(which)) inStream++
+        else if (which === packetKind.subscribe) listens = true
+      }
+    }
     return bytes
   }
 
-  function mayPass(which: Kind | undefined): boolean {
+  /** Also while nothing else may pass: who is connected is answered its pings, and waits in peace. */
+  function mayConnect(): boolean {
+    if (turn === 'unasked') {
+      turn = 'asked'
+      admit?.(() => {
+        turn = 'come'
+        // Asked from within a pump, the answer may come at once.
+        if (!pumping) pump()
+      })
+    }
+    return turn === 'come'
+  }
+
+  /** What the packet at the head brings, if it may take the shortcut: overtaking nothing that is under way. */
+  function readShort(which: PacketKind): PlainPublish | undefined {
+    if (!shortcut || listens || inStream > 0 || !isPublishKind(which)) return undefined
+    const { chunk, from, end } = held.join()
+    return shortcut.read(chunk, from, end)
+  }
+
+  /** The other way round: acknowledgements go out in the order of the messages [MQTT-4.6.0-2]. */
+  function mustWait(which: PacketKind): boolean {
+    return isPublishKind(which) && shortcut !== undefined && shortcut.waiting() > 0
+  }
+
+  function mayPass(which: PacketKind): boolean {
     // Its end will call.
-    if (which !== kind.other && inFlight >= limits.maxInFlight) return false
+    if (isPublishKind(which) && inFlight >= limits.maxInFlight) return false
     if (!rate.take()) return tryAgainLater()
-    if (which === kind.unacknowledged && !together.unacknowledged.take()) {
+    if (which === packetKind.unacknowledged && !together.unacknowledged.take()) {
       rate.giveBack()
       return tryAgainLater()
     }
-    if (which !== kind.other) inFlight++
+    if (isPublishKind(which)) inFlight++
     return true
   }
 
@@ -209,42 +280,15 @@ export function createGate(
     return false
   }
 
-  function forgetSizes(): void {
-    sizes = []
-    kinds = []
-    first = 0
+  function finishedLarge(): void {
+    largeInFlight--
+    finishedOne()
   }
 
-  function letThrough(bytes: number): void {
-    heldBytes -= bytes
-    together.heldBytes -= bytes
-    let left = bytes
-    while (left > 0) {
-      const chunk = chunks[0]
-      if (!chunk) return
-      if (chunk.length <= left) {
-        chunks.shift()
-        left -= chunk.length
-        wanted = stream.push(chunk)
-      } else {
-        chunks[0] = chunk.subarray(left)
-        wanted = stream.push(chunk.subarray(0, left))
-        left = 0
-      }
-    }
-  }
-
-  function writeThrough(chunk: Buffer, done: () => void): void {
-    if (socket.destroyed || socket.writableEnded || socket.write(chunk)) done()
-    else {
-      const settle = () => {
-        socket.off('drain', settle)
-        socket.off('close', settle)
-        done()
-      }
-      socket.on('drain', settle)
-      socket.on('close', settle)
-    }
+  function finishedOne(): void {
+    inFlight--
+    // Below half, so that packets go on in groups rather than one by one.
+    if (inFlight <= limits.maxInFlight / 2) pump()
   }
 
   function endInput(): void {
@@ -264,9 +308,8 @@ export function createGate(
       pump()
     },
     finished: () => {
-      inFlight--
-      // Below half, so that packets go on in groups rather than one by one.
-      if (inFlight <= limits.maxInFlight / 2) pump()
+      inStream--
+      finishedOne()
     },
     pump,
     countSilence: (ms) => {
@@ -274,19 +317,8 @@ export function createGate(
       if (!socket.isPaused()) silenceMs += ms
       return silenceMs
     },
+    unreadBytes: () => stream.writableLength + socket.writableLength,
+    saidGoodbye: () => goodbye,
     cut,
   }
-}
-
-function kindOf(firstByte: number): Kind {
-  if (!isPublish(firstByte)) return kind.other
-  return isUnacknowledged(firstByte) ? kind.unacknowledged : kind.publish
-}
-
-/** Ends a connection once what was written has gone out, but waits for nobody. */
-function hangUp(socket: Duplex): void {
-  if (socket.destroyed) return
-  const deadline = setTimeout(() => socket.destroy(), 1000)
-  socket.once('close', () => clearTimeout(deadline))
-  socket.end(() => socket.destroy())
 }

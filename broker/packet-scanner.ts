@@ -7,6 +7,8 @@ const maxLengthBytes = 4
 /** Why a stream cannot be read on. */
 export type ScanFault =
   | { kind: 'malformed' }
+  /** Of what carries the packets; `maxBytes` is what it may have. */
+  | { kind: 'frame-too-large'; maxBytes: number }
   /** `bytes` is what the fixed header announces; `bodyAt` where in the chunk the variable header begins. */
   | { kind: 'too-large'; bytes: number; publish: boolean; bodyAt: number }
 

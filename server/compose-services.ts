@@ -3,10 +3,12 @@ import type { Logger } from 'pino'
 import type { Clock } from '#shared/domain/clock.ts'
 import { createCookerService } from './features/cookers/service.ts'
 import { createDeviceBook } from './features/devices/device-book.ts'
+import { createDeviceConnections } from './features/devices/device-connections.ts'
 import { createDeviceStates } from './features/devices/device-states.ts'
 import { createDeviceService } from './features/devices/service.ts'
 import { createEventsService } from './features/events/service.ts'
 import { createForecastsService } from './features/forecasts/service.ts'
+import { createJobsService } from './features/jobs/service.ts'
 import { createPiecesService } from './features/pieces/service.ts'
 import { createReadingService } from './features/readings/service.ts'
 import { createRecipesService } from './features/recipes/service.ts'
@@ -31,6 +33,8 @@ export interface ServiceDeps {
   passwordCost?: number | undefined
   /** Called when too many readings wait for the database, and again when there is room. */
   onPressure: (on: boolean) => void
+  /** The same for large packs alone. */
+  onLargePressure: (on: boolean) => void
 }
 
 export type Services = ReturnType<typeof composeServices>
@@ -44,6 +48,7 @@ export function composeServices({
   tokenKey,
   passwordCost,
   onPressure,
+  onLargePressure,
 }: ServiceDeps) {
   const bus = createLiveBus()
   const { publish } = bus
@@ -59,7 +64,8 @@ export function composeServices({
   bus.subscribe((site, { pieces, cookers }) => {
     if (pieces?.length || cookers?.length) void deviceStates.tellPlaces(site)
   })
-  const devices = createDeviceService({ ...common, book: deviceBook })
+  const deviceConnections = createDeviceConnections({ db, clock, log })
+  const devices = createDeviceService({ ...common, book: deviceBook, connections: deviceConnections })
   const ingest = createIngest({
     db: ingestDb,
     clock,
@@ -67,13 +73,16 @@ export function composeServices({
     live: bus,
     onHeard: (deviceId, { atMs, ...heard }) => deviceStates.note(deviceId, { lastSeenAtMs: atMs, ...heard }),
     onPressure,
+    onLargePressure,
     log,
   })
-  const readings = createReadingService({ db, clock, sensorsOf: devices.sensorsOf, ingest })
+  const byHttp = { ...ingest, accept: deviceConnections.counting(ingest.accept, 'http') }
+  const readings = createReadingService({ db, clock, sensorsOf: devices.sensorsOf, ingest: byHttp })
 
   const cookers = createCookerService(common)
   const recipes = createRecipesService({ db })
   const forecasts = createForecastsService({ db, readings })
+  const jobs = createJobsService({ db, clock, toForecast: forecasts.cooks.toForecast })
   const pieces = createPiecesService({ ...common, recipes, latestForecasts: forecasts.latestOf })
   const events = createEventsService({ ...common, pieces, cookers })
   const services = createServicesService(common)
@@ -89,7 +98,18 @@ export function composeServices({
   })
 
   return {
-    ...{ bus, tickets, sessions, sites, deviceBook, deviceStates, devices, ingest, readings },
-    ...{ cookers, recipes, forecasts, pieces, events, services, tonight },
+    ...{
+      bus,
+      tickets,
+      sessions,
+      sites,
+      deviceBook,
+      deviceStates,
+      deviceConnections,
+      devices,
+      ingest,
+      readings,
+    },
+    ...{ cookers, recipes, forecasts, jobs, pieces, events, services, tonight },
   }
 }

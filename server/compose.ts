@@ -1,19 +1,24 @@
 import { createServer } from 'node:http'
 import type { Logger } from 'pino'
 import { createBroker, type Broker } from '../broker/broker.ts'
+import { createMqttSockets } from '../broker/websocket.ts'
 import type { House } from '#shared/contract/session.ts'
 import type { Clock } from '#shared/domain/clock.ts'
+import { livePath } from '#shared/contract/live.ts'
+import { mqttPath } from '#shared/contract/mqtt.ts'
 import { may } from '#shared/domain/permissions.ts'
 import { createApp } from './app.ts'
 import { composeServices } from './compose-services.ts'
 import { openDatabase } from './db/database.ts'
 import { ensurePartitions, livePartitionSpan } from './db/partitions.ts'
+import { watchSecrets } from './features/devices/secret-watch.ts'
 import { createHealthService } from './features/health/service.ts'
 import { usualSignInLimit, type SignInLimit } from './features/session/sign-in-limit.ts'
 import { healthSources } from './health-sources.ts'
 import { createGuard } from './http/guard.ts'
+import { clientAddress, dispatchUpgrades } from './http/upgrades.ts'
 import type { Person } from './http/mount.ts'
-import { startJobs, type Jobs } from './jobs/start-jobs.ts'
+import { startJobs, type Jobs, type JobsDeps } from './jobs/start-jobs.ts'
 import { asPortTaken, closeHttp, listen } from './listen.ts'
 import { createLiveHub } from './live/hub.ts'
 import { mountFeatures } from './routes.ts'
@@ -33,7 +38,7 @@ export interface ServerDeps {
   /** Where devices connect; without it there is no broker. */
   mqtt?: { host: string; port: number } | undefined
   /** What runs without a request; without it this process leaves that to others. */
-  jobs?: { everyMs?: number } | undefined
+  jobs?: Pick<JobsDeps, 'retentionMonths' | 'byTheClock' | 'sweep' | 'makePool'> | undefined
   /** The house's name and accounts, when this is the demo house. */
   demo?: (NonNullable<House['demo']> & { name: string }) | undefined
   /** Where people reach this server, when that is known. */
@@ -66,10 +71,11 @@ const farewellMs = 5000
  */
 export function composeServer(deps: ServerDeps) {
   const { databaseUrl, log, clock, tokenKey, passwordCost, build } = deps
-  const db = openDatabase(databaseUrl)
+  const db = openDatabase(databaseUrl, { answerWithinMs: 4_000 })
   const ingestDb = openDatabase(databaseUrl, { max: 2 })
   let broker: Broker | undefined
   let jobs: Jobs | undefined
+  let stopSecretWatch: (() => void) | undefined
 
   const services = composeServices({
     ...{ db, ingestDb, log, clock, tokenKey, passwordCost },
@@ -77,10 +83,17 @@ export function composeServer(deps: ServerDeps) {
       log.warn(on ? 'Devices have to wait for the database' : 'Devices may send again')
       broker?.press(on)
     },
+    onLargePressure: (on) => broker?.press(on, 'large'),
   })
   const health = createHealthService({
     ...{ db, clock, build },
-    sources: healthSources({ broker: () => broker, ingest: services.ingest, jobs: () => jobs }),
+    sources: healthSources({
+      broker: () => broker,
+      ingest: services.ingest,
+      live: () => hub,
+      jobs: services.jobs,
+      runsJobs: deps.jobs !== undefined,
+    }),
   })
   const app = createApp({
     log,
@@ -115,6 +128,21 @@ export function composeServer(deps: ServerDeps) {
     log,
   })
 
+  const mqttSockets = createMqttSockets({
+    onStream: (stream, request) => {
+      if (!broker) stream.destroy()
+      else {
+        const remoteAddress = clientAddress(request, deps.trustProxy ?? 0)
+        broker.handle(stream, { transport: 'websocket', remoteAddress })
+      }
+    },
+  })
+  const stopUpgrades = dispatchUpgrades(httpServer, {
+    handlers: new Map(deps.mqtt ? [[mqttPath, mqttSockets.upgrade]] : []),
+    // The hub listens for its own.
+    elsewhere: [livePath],
+    allowedOrigins: deps.publicUrl === undefined ? [] : [new URL(deps.publicUrl).origin],
+  })
   /** Asked anew each time: a socket stays open for weeks, a role may not. */
   async function mayView({ userId }: Person, siteSlug: string): Promise<boolean> {
     const [person, site] = await Promise.all([
@@ -139,6 +167,11 @@ export function composeServer(deps: ServerDeps) {
       await services.deviceBook.warm()
       await ingestDb.raw('select 1')
       broker = deps.mqtt && (await startBroker(deps.mqtt))
+      if (broker) {
+        services.deviceConnections.attach(broker)
+        const { deviceBook: book, deviceConnections: connections } = services
+        stopSecretWatch = watchSecrets({ db, clock, log, book, connections })
+      }
       const { forecasts, bus } = services
       jobs =
         deps.jobs && startJobs({ db, databaseUrl, clock, log, forecasts, publish: bus.publish, ...deps.jobs })
@@ -151,13 +184,14 @@ export function composeServer(deps: ServerDeps) {
   }
 
   function startBroker({ host, port }: { host: string; port: number }): Promise<Broker> {
-    const { devices, ingest, deviceStates } = services
+    const { devices, ingest, deviceStates, deviceConnections } = services
     return createBroker({
       host,
       port,
       signIn: devices.signIn,
-      accept: (message) => ingest.accept(message),
+      accept: deviceConnections.counting(ingest.accept),
       onRefused: (refusal) => {
+        deviceConnections.trouble(refusal.device.deviceId, { ...refusal, kind: refusal.reason })
         ingest.refuse(refusal).catch((error: unknown) => {
           log.warn(
             { err: error, reason: refusal.reason },
@@ -165,7 +199,11 @@ export function composeServer(deps: ServerDeps) {
           )
         })
       },
-      onStatus: ({ deviceId }, connection) => deviceStates.note(deviceId, { connection }),
+      onStatus: ({ deviceId }, connection, newest) => {
+        deviceStates.note(deviceId, { connection })
+        deviceConnections.changed(deviceId, connection === 'online', newest)
+      },
+      onTrouble: ({ device, ...trouble }) => deviceConnections.trouble(device.deviceId, trouble),
       log,
     }).catch((error: unknown) => {
       throw error instanceof Error ? asPortTaken(error, port, 'devices (MQTT)', 'MQTT_PORT') : error
@@ -175,11 +213,14 @@ export function composeServer(deps: ServerDeps) {
   let stopping: Promise<void> | undefined
 
   async function stopAll(): Promise<void> {
+    stopSecretWatch?.()
+    stopUpgrades()
     // Requests first: one of them may bring readings, which the ingest then still takes.
     await Promise.all([closeHttp(httpServer, farewellMs), hub.stop(), broker?.stop()])
     await services.ingest.stop()
     await jobs?.stop()
     await services.deviceStates.stop()
+    await services.deviceConnections.stop()
     await ingestDb.destroy()
     await db.destroy()
   }

@@ -20,6 +20,8 @@ const Environment = z.object({
   TRUST_PROXY: z.preprocess(unsetIfEmpty, z.coerce.number().int().min(0).max(10).default(0)),
   DEMO: onOff,
   DEMO_SEED: z.preprocess(unsetIfEmpty, z.coerce.number().int().min(1).default(1)),
+  /** For how many months readings are kept as sent; 0 keeps them for ever. */
+  RETENTION_MONTHS: z.preprocess(unsetIfEmpty, z.coerce.number().int().min(0).max(1200).default(13)),
   LOG_LEVEL: z.preprocess(unsetIfEmpty, z.enum(['fatal', 'error', 'warn', 'info', 'debug']).default('info')),
   NODE_ENV: optionalText,
 })
@@ -45,6 +47,8 @@ export type Config = Readonly<{
   /** `on` and `off` as asked for; unset: on when the database is new and this is not production. */
   demo: 'on' | 'off' | undefined
   demoSeed: number
+  /** Months for which readings are kept as sent; 0 keeps them for ever. */
+  retentionMonths: number
   production: boolean
   logLevel: z.infer<typeof Environment>['LOG_LEVEL']
   secrets: Readonly<Secrets>
@@ -76,6 +80,7 @@ export function readConfig(environment: NodeJS.ProcessEnv = process.env): Config
     trustProxy: settings.TRUST_PROXY,
     demo: settings.DEMO,
     demoSeed: settings.DEMO_SEED,
+    retentionMonths: settings.RETENTION_MONTHS,
     production: settings.NODE_ENV === 'production',
     logLevel: settings.LOG_LEVEL,
     secrets: Object.freeze(readOrMakeSecrets(dataDir)),

@@ -1,16 +1,20 @@
 import type { Broker } from '../broker/broker.ts'
 import type { HealthSources } from './features/health/service.ts'
+import type { JobsService } from './features/jobs/service.ts'
 import type { Ingest } from './ingest/ingest.ts'
-import type { Jobs } from './jobs/start-jobs.ts'
+import type { LiveHub } from './live/hub.ts'
 
 export interface HealthSourceDeps {
   broker: () => Broker | undefined
   ingest: Ingest
-  jobs: () => Jobs | undefined
+  live: () => LiveHub
+  jobs: JobsService
+  /** Whether this process does jobs; where not, what waits is not its fault. */
+  runsJobs: boolean
 }
 
 /** Asks the parts of the server how they are, in words for a person. */
-export function healthSources({ broker, ingest, jobs }: HealthSourceDeps): HealthSources {
+export function healthSources({ broker, ingest, live, jobs, runsJobs }: HealthSourceDeps): HealthSources {
   return {
     broker: () => {
       const running = broker()
@@ -22,7 +26,16 @@ export function healthSources({ broker, ingest, jobs }: HealthSourceDeps): Healt
       const detail = databaseOk ? 'stores what comes' : 'waits for the database'
       return { ok: databaseOk, detail, waiting, delayMedianMs, delayP99Ms }
     },
-    forecast: () =>
-      jobs()?.health() ?? { ok: true, detail: 'not run by this process', pieces: 0, lastRunMs: null },
+    live: () => {
+      const connections = live().connections()
+      const detail = connections === 1 ? '1 page watches' : `${connections} pages watch`
+      return { ok: true, detail, connections }
+    },
+    work: async () => {
+      const told = await jobs.health()
+      if (runsJobs) return told
+      const elsewhere = { ok: true, detail: 'not run by this process' }
+      return { forecast: { ...told.forecast, ...elsewhere }, jobs: { ...told.jobs, ...elsewhere } }
+    },
   }
 }

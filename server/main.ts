@@ -47,7 +47,7 @@ async function start(config: Config, log: Logger): Promise<void> {
     build: buildName(root),
     http: { host: config.host, port: config.port },
     mqtt: { host: config.host, port: config.mqttPort },
-    jobs: {},
+    jobs: { retentionMonths: config.retentionMonths },
     demo: demo?.house,
     publicUrl: config.publicUrl,
     clientDir: join(root, 'dist/client'),

@@ -7,6 +7,7 @@ import { eventRoutes } from './features/events/routes.ts'
 import { forecastRoutes } from './features/forecasts/routes.ts'
 import { healthRoutes } from './features/health/routes.ts'
 import type { HealthService } from './features/health/service.ts'
+import { jobRoutes } from './features/jobs/routes.ts'
 import { pieceRoutes } from './features/pieces/routes.ts'
 import { readingRoutes } from './features/readings/routes.ts'
 import { serviceRoutes } from './features/services/routes.ts'
@@ -45,5 +46,6 @@ export function mountFeatures(mount: Mount, router: Router, deps: RouteDeps): vo
   pieceRoutes(mount, services)
   eventRoutes(mount, services)
   forecastRoutes(mount, services)
+  jobRoutes(mount, services)
   healthRoutes(mount, { health })
 }

@@ -4,7 +4,11 @@ import type { DeviceIdentity, Guard, Person, SiteContext } from './mount.ts'
 
 export interface GuardDeps {
   personOf: (accessToken: string) => Promise<Person | undefined>
-  signInDevice: (username: string, secret: string) => Promise<DeviceIdentity | undefined>
+  signInDevice: (
+    username: string,
+    secret: string,
+    origin: { transport: 'http'; remoteAddress: string },
+  ) => Promise<DeviceIdentity | undefined>
   siteOf: (source: SiteSource, value: string) => Promise<SiteContext | undefined>
 }
 
@@ -20,7 +24,8 @@ export function createGuard({ personOf, signInDevice, siteOf }: GuardDeps): Guar
       if (encoded === undefined) return undefined
       const [, username, secret] =
         /^([^:]*):(.*)$/s.exec(Buffer.from(encoded, 'base64').toString('utf8')) ?? []
-      return username && secret ? signInDevice(username, secret) : undefined
+      if (!username || !secret) return undefined
+      return signInDevice(username, secret, { transport: 'http', remoteAddress: request.ip ?? '' })
     },
     siteOf,
   }

@@ -3,6 +3,7 @@ import type { Request, Response, Router } from 'express'
 import { z } from 'zod'
 import type {
   Access,
+  AnySiteAccess,
   DeviceAccess,
   Endpoint,
   SignedInAccess,
@@ -49,7 +50,7 @@ export interface Guard {
 
 type Who<A extends Access> = A extends SiteAccess
   ? { person: Person; site: SiteContext }
-  : A extends SignedInAccess
+  : A extends SignedInAccess | AnySiteAccess
     ? { person: Person }
     : A extends DeviceAccess
       ? { device: DeviceIdentity }
@@ -124,6 +125,10 @@ async function identify(
     throw unauthorized()
   }
   if (access.kind === 'signed-in') return { person }
+  if (access.kind === 'any-site') {
+    if (![...person.rolesBySite.values()].some((roles) => may(roles, access.action))) throw forbidden()
+    return { person }
+  }
 
   const value = request.params[access.by]
   const site = typeof value === 'string' ? await guard.siteOf(access.by, value) : undefined
@@ -159,7 +164,10 @@ const Versioned = z.union([
  * version here tells edits apart, not everything that an answer may show (a forecast, say).
  */
 function reply(endpoint: Endpoint, answer: unknown, response: Response): void {
-  response.status(endpoint.status)
+  // A handler that found things unwell has said so.
+  if (endpoint.unwellStatus === undefined || response.statusCode !== endpoint.unwellStatus) {
+    response.status(endpoint.status)
+  }
   if (endpoint.versioned) {
     const versioned = Versioned.safeParse(answer)
     if (versioned.success) response.set('ETag', `"${versioned.data.version}"`)

@@ -87,6 +87,9 @@ function operation(endpoint: Endpoint, schemas: SchemaCollector): Operation {
     ...(access.kind === 'site' && {
       description: `For these roles at the site: ${matrix[access.action].join(', ')}.`,
     }),
+    ...(access.kind === 'any-site' && {
+      description: `For these roles at any site: ${matrix[access.action].join(', ')}.`,
+    }),
     security: securityOf(endpoint),
     parameters: [
       ...parametersOf('path', endpoint.params, schemas),
@@ -96,6 +99,12 @@ function operation(endpoint: Endpoint, schemas: SchemaCollector): Operation {
     ...(body && { requestBody: { required: true, content: { 'application/json': { schema: body } } } }),
     responses: {
       [endpoint.status]: success(endpoint, schemas),
+      ...(endpoint.unwellStatus && {
+        [endpoint.unwellStatus]: {
+          ...success(endpoint, schemas),
+          description: 'Not well; the answer says what',
+        },
+      }),
       ...refusals(endpoint, namesVersion),
     },
   }
@@ -145,6 +154,7 @@ function refusals(endpoint: Endpoint, namesVersion: boolean): Record<string, Api
     public: {},
     'signed-in': { 401: problem('Not signed in') },
     device: { 401: problem('No device with that user name and secret') },
+    'any-site': { 401: problem('Not signed in'), 403: problem('Your roles do not allow it') },
     site: {
       401: problem('Not signed in'),
       403: problem('Your role at the site does not allow it'),

@@ -2,8 +2,9 @@ import type { Knex } from 'knex'
 import { z } from 'zod'
 import type { ReadingTuple } from '#shared/contract/live.ts'
 import { ensurePartitions } from '../db/partitions.ts'
+import type { NewReading } from './decode.ts'
 import type { Job } from './job.ts'
-import { storeReadings, type ReadingRow } from './store-readings.ts'
+import { storeReadings } from './store-readings.ts'
 import { storeRejections, type Rejection } from './store-rejections.ts'
 import type { Batch } from './waiting-line.ts'
 
@@ -12,69 +13,69 @@ export interface Committed {
   stored: Map<string, ReadingTuple[]>
 }
 
-/** A reading of the batch and where it came from. */
-interface Placed {
-  job: Job
-  index: number
-}
-
 /** Commits a batch: its readings, and what was refused of it with the reason. Notes the outcome in each job. */
 export async function commitBatch(db: Knex, batch: Batch): Promise<Committed> {
-  const rows: ReadingRow[] = []
-  const places: Placed[] = []
-  const rejections: Rejection[] = []
+  const rows: NewReading[] = []
+  const refused: Rejection[] = []
   for (const { job, from, to } of batch.slices) {
     for (let index = from; index < to; index++) {
       const reading = job.readings[index]
-      if (!reading) continue
-      rows.push({ ...reading, receivedAtMs: job.receivedAtMs })
-      places.push({ job, index })
+      if (reading) rows.push(reading)
     }
-    if (from === 0) rejections.push(...rejectionsOf(job))
+    if (from === 0 && job.refused.length > 0) refused.push(...rejectionsOf(job))
   }
 
   const store = async (trx: Knex) => {
-    const unstored = await storeReadings(trx, rows)
-    const conflicts = new Map<number, number>()
-    for (const { index, otherValue } of unstored) {
-      if (otherValue !== undefined) conflicts.set(index, otherValue)
-    }
-    for (const [index, otherValue] of conflicts) {
-      const place = places[index]
-      if (place) rejections.push(conflictOf(place, otherValue))
-    }
-    await storeRejections(trx, rejections)
-    return { unstored: new Set(unstored.map(({ index }) => index)), conflicts }
+    const unstored = new Map<number, number | undefined>()
+    for (const { index, otherValue } of await storeReadings(trx, rows)) unstored.set(index, otherValue)
+    await storeRejections(trx, [...refused, ...conflictsAmong(batch, unstored)])
+    return unstored
   }
-  const result = await withPartitions(db, rows, () =>
+  const unstored = await withPartitions(db, rows, () =>
     // A single statement is a transaction already; conflicts found later are told before anyone is acknowledged.
-    rejections.length > 0 ? db.transaction(store) : store(db),
+    refused.length > 0 ? db.transaction(store) : store(db),
   )
-  return note(places, result)
+  return note(batch, unstored)
 }
 
 /** Only now, after the commit, the outcome is written down: a batch may be tried more than once. */
-function note(
-  places: readonly Placed[],
-  { unstored, conflicts }: { unstored: ReadonlySet<number>; conflicts: ReadonlyMap<number, number> },
-): Committed {
+function note(batch: Batch, unstored: Unstored): Committed {
   const stored = new Map<string, ReadingTuple[]>()
-  for (const [at, { job, index }] of places.entries()) {
-    const reading = job.readings[index]
-    if (!reading) continue
-    const otherValue = conflicts.get(at)
-    if (otherValue !== undefined) {
-      job.outcome.rejected.push({ reason: 'conflict', detail: conflictText(job, index, otherValue) })
-    } else if (unstored.has(at)) {
-      job.outcome.duplicates++
-    } else {
-      job.outcome.stored++
-      let ofSite = stored.get(job.sender.siteSlug)
-      if (!ofSite) stored.set(job.sender.siteSlug, (ofSite = []))
-      ofSite.push([reading.channelId, reading.atMs, reading.celsius])
+  let at = 0
+  for (const { job, from, to } of batch.slices) {
+    const { outcome, sender } = job
+    let ofSite = stored.get(sender.siteSlug)
+    if (!ofSite) stored.set(sender.siteSlug, (ofSite = []))
+    for (let index = from; index < to; index++, at++) {
+      const reading = job.readings[index]
+      if (!reading) continue
+      if (unstored.size === 0 || !unstored.has(at)) {
+        outcome.stored++
+        ofSite.push([reading.channelId, reading.atMs, reading.celsius])
+        continue
+      }
+      const otherValue = unstored.get(at)
+      if (otherValue === undefined) outcome.duplicates++
+      else outcome.rejected.push({ reason: 'conflict', detail: conflictText(reading, otherValue) })
     }
   }
   return { stored }
+}
+
+/** By place in the batch: undefined where the same value is there already, else the other value that is. */
+type Unstored = ReadonlyMap<number, number | undefined>
+
+function conflictsAmong(batch: Batch, unstored: Unstored): Rejection[] {
+  if (unstored.size === 0) return []
+  const conflicts: Rejection[] = []
+  let at = 0
+  for (const { job, from, to } of batch.slices) {
+    for (let index = from; index < to; index++, at++) {
+      const otherValue = unstored.get(at)
+      if (otherValue !== undefined) conflicts.push(...conflictOf(job, index, otherValue))
+    }
+  }
+  return conflicts
 }
 
 /** What of a message was refused, one row a reason. */
@@ -91,21 +92,25 @@ function rejectionsOf(job: Job): Rejection[] {
   }))
 }
 
-function conflictOf({ job, index }: Placed, otherValue: number): Rejection {
-  return {
-    ...headOf(job),
-    reason: 'conflict',
-    detail: conflictText(job, index, otherValue),
-    payload: JSON.stringify(job.readings[index]),
-  }
+function conflictOf(job: Job, index: number, otherValue: number): Rejection[] {
+  const reading = job.readings[index]
+  if (!reading) return []
+  const { channelId, atMs, value, celsius } = reading
+  return [
+    {
+      ...headOf(job),
+      reason: 'conflict',
+      detail: conflictText(reading, otherValue),
+      payload: JSON.stringify({ channelId, atMs, value, celsius }),
+    },
+  ]
 }
 
 function headOf(job: Job) {
   return { deviceId: job.sender.deviceId, receivedAtMs: job.receivedAtMs, topic: job.topic }
 }
 
-function conflictText(job: Job, index: number, otherValue: number): string {
-  const { atMs = 0, value = 0 } = job.readings[index] ?? {}
+function conflictText({ atMs, value }: NewReading, otherValue: number): string {
   return `the reading of ${new Date(atMs).toISOString()} is ${otherValue} already, not ${value}`
 }
 
@@ -115,7 +120,7 @@ const NoPartition = z.object({
 })
 
 /** Weeks are made ahead by a job; should one lack all the same, readings do not wait for it. */
-async function withPartitions<T>(db: Knex, rows: readonly ReadingRow[], store: () => Promise<T>): Promise<T> {
+async function withPartitions<T>(db: Knex, rows: readonly NewReading[], store: () => Promise<T>): Promise<T> {
   try {
     return await store()
   } catch (error) {

@@ -2,6 +2,8 @@ import { maxPackRecords, SenmlPack, SenmlRecord, senmlUnits } from '#shared/cont
 import type { RejectionReason } from '#shared/contract/device.ts'
 import { celsiusOf, sensorAt, unitOfSensor } from '#shared/domain/sensor.ts'
 import { resolvePack, type ResolvedRecord } from '#shared/domain/senml.ts'
+import { highestC, lowestC, maxAgeMs, maxAheadMs } from './bounds.ts'
+import { decodePlain } from './decode-plain.ts'
 import type { KnownChannels } from './known-device.ts'
 
 /** A reading that may be stored. */
@@ -13,6 +15,8 @@ export interface NewReading {
   value: number
   /** What it means, by the sensor of its time. */
   celsius: number
+  /** Milliseconds since 1970 UTC. */
+  receivedAtMs: number
 }
 
 /** Why something was not taken; `record` is what was sent, as text. */
@@ -31,14 +35,6 @@ export interface Decoded {
   unknownChannel: boolean
 }
 
-/** What a temperature in a pit, a piece or a holding cabinet can be, in °C. */
-const lowestC = -50
-const highestC = 600
-
-/** How far a device's clock may be ahead, and how old a stored reading may be when it is sent, in ms. */
-const maxAheadMs = 2 * 60 * 1000
-const maxAgeMs = 14 * 24 * 3600 * 1000
-
 const knownUnits: readonly string[] = senmlUnits
 
 /**
@@ -52,14 +48,30 @@ export function decodePack(
   channels: KnownChannels,
   nowMs: number,
 ): Decoded {
-  const decoded: Decoded = {
-    readings: [],
-    refused: [],
-    batteryPercent: undefined,
-    signalDbm: undefined,
-    unknownChannel: false,
+  if (!Buffer.isBuffer(payload)) return decodeRecords(payload, channels, nowMs)
+  let json: unknown
+  try {
+    json = JSON.parse(payload.toString())
+  } catch (error) {
+    const detail = error instanceof Error ? error.message : 'not JSON'
+    const record = payload.toString('utf8', 0, maxRecordText)
+    return { ...nothingDecoded(), refused: [{ reason: 'not-json', detail, record }] }
   }
-  const records = Buffer.isBuffer(payload) ? parseRecords(payload, decoded.refused) : payload
+  return decodeRecords(json, channels, nowMs)
+}
+
+function decodeRecords(json: unknown, channels: KnownChannels, nowMs: number): Decoded {
+  const readings = decodePlain(json, channels, nowMs)
+  if (readings === undefined) return decodeThoroughly(json, channels, nowMs)
+  const decoded = nothingDecoded()
+  decoded.readings = readings
+  return decoded
+}
+
+/** Takes every kind of record, and tells of each that it refuses the reason. */
+export function decodeThoroughly(json: unknown, channels: KnownChannels, nowMs: number): Decoded {
+  const decoded = nothingDecoded()
+  const records = checkRecords(json, decoded.refused)
   const resolved = resolvePack(records, nowMs / 1000)
   for (const { index, reason, detail } of resolved.refused) {
     decoded.refused.push({ reason, detail, record: JSON.stringify(records[index]) })
@@ -76,16 +88,18 @@ export function decodePack(
   return decoded
 }
 
-/** The records of a payload; what cannot be read is refused, and nothing else of the pack with it if possible. */
-function parseRecords(payload: Buffer, refused: Refused[]): readonly SenmlRecord[] {
-  let json: unknown
-  try {
-    json = JSON.parse(payload.toString())
-  } catch (error) {
-    const detail = error instanceof Error ? error.message : 'not JSON'
-    refused.push({ reason: 'not-json', detail, record: payload.toString('utf8', 0, maxRecordText) })
-    return []
+function nothingDecoded(): Decoded {
+  return {
+    readings: [],
+    refused: [],
+    batteryPercent: undefined,
+    signalDbm: undefined,
+    unknownChannel: false,
   }
+}
+
+/** The records of a pack; what cannot be read is refused, and nothing else of the pack with it if possible. */
+function checkRecords(json: unknown, refused: Refused[]): readonly SenmlRecord[] {
   const pack = SenmlPack.safeParse(json)
   if (pack.success) return pack.data
   return parseEach(json, refused)
@@ -168,7 +182,7 @@ function takeReading(record: ResolvedRecord, channels: KnownChannels, nowMs: num
     )
     return
   }
-  decoded.readings.push({ channelId: channel.id, atMs, value: record.value, celsius })
+  decoded.readings.push({ channelId: channel.id, atMs, value: record.value, celsius, receivedAtMs: nowMs })
 }
 
 function refuse(decoded: Decoded, record: ResolvedRecord, reason: RejectionReason, detail: string): void {

@@ -1,15 +1,14 @@
 import { performance } from 'node:perf_hooks'
-import type { Knex } from 'knex'
-import type { Logger } from 'pino'
 import type { RejectionReason } from '#shared/contract/device.ts'
-import type { LiveChanges } from '#shared/contract/live.ts'
 import type { SenmlRecord } from '#shared/contract/senml.ts'
-import type { Clock } from '#shared/domain/clock.ts'
 import { commitBatch, type Committed } from './commit-batch.ts'
 import { decodePack } from './decode.ts'
 import { createDelayWindow } from './delay-window.ts'
+import { hear, type Heard } from './heard.ts'
+import { usualLimits, type IngestOptions } from './ingest-options.ts'
 import { createJob, type Job, type Outcome, type Received } from './job.ts'
-import type { ChannelSource, Sender } from './known-device.ts'
+import type { Sender } from './known-device.ts'
+import { createLargePacks } from './large-packs.ts'
 import { createRetry } from './retry.ts'
 import { createWaitingLine, type Batch } from './waiting-line.ts'
 
@@ -41,36 +40,6 @@ export interface IngestMetrics {
   databaseOk: boolean
 }
 
-export interface IngestOptions {
-  /** Best a pool of its own: two connections are enough, and no page can take them. */
-  db: Knex
-  clock: Clock
-  channels: ChannelSource
-  live: { publish: (siteSlug: string, changes: LiveChanges) => void }
-  /** Called after commit, for each message with something in it. */
-  onHeard: (deviceId: number, heard: Heard) => void
-  /** Called when too much waits, and again when there is room: sockets are not read in between. */
-  onPressure: (on: boolean) => void
-  log: Logger
-  limits?: Partial<IngestLimits>
-}
-
-export interface Heard {
-  atMs: number
-  batteryPercent: number | undefined
-  signalDbm: number | undefined
-}
-
-export interface IngestLimits {
-  /** How long a message waits for company, in ms. */
-  lingerMs: number
-  maxRows: number
-  /** Rows of late messages in a batch that has live ones. */
-  lateRows: number
-  /** Messages and readings that may wait; above it sockets are not read until half of it has gone. */
-  maxWaiting: number
-}
-
 export interface Ingest {
   /** Resolves when everything in the message is committed, taken or rejected. Rejects: it must be sent again. */
   accept: (message: IngestMessage) => Promise<Outcome>
@@ -86,7 +55,11 @@ export interface Ingest {
 /** Nothing can be taken in just now; the sender keeps what it has and tries again. */
 export class IngestUnavailable extends Error {}
 
-const defaultLimits: IngestLimits = { lingerMs: 5, maxRows: 1000, lateRows: 300, maxWaiting: 100_000 }
+/** A record of a large pack, in bytes, about: for how much waits. */
+const recordBytes = 30
+
+/** A batch that takes so long waits for a database that does not answer, in ms. */
+const slowMs = 5_000
 
 /**
  * Takes readings in: decodes and checks each message at once, collects for a few milliseconds, commits with one insert
@@ -94,19 +67,42 @@ const defaultLimits: IngestLimits = { lingerMs: 5, maxRows: 1000, lateRows: 300,
  */
 export function createIngest(options: IngestOptions): Ingest {
   const { db, clock, channels, live, onHeard, onPressure, log } = options
-  const limits = { ...defaultLimits, ...options.limits }
+  const limits = { ...usualLimits, ...options.limits }
   const line = createWaitingLine(limits)
   const delays = createDelayWindow()
-  const retry = createRetry({ log, waiting: () => line.size().readings })
+  const large = createLargePacks(limits.maxLargeBytes, options.onLargePressure ?? (() => undefined))
+  const retry = createRetry({ log, waiting })
   let newestMs: number | null = null
   let running: Promise<void> | undefined
+  let runningSince = 0
   let timer: NodeJS.Timeout | undefined
   let pressed = false
   let stopping = false
 
   function accept({ device, topic, payload }: IngestMessage): Promise<Outcome> {
     const message = { sender: device, topic, receivedAtMs: clock.now(), acceptedAt: performance.now() }
-    const known = channels.known(device.deviceId)
+    return Buffer.isBuffer(payload) && payload.length > limits.largeBytes
+      ? acceptLater(message, payload)
+      : acceptNow(message, payload)
+  }
+
+  function acceptLater(message: Received, payload: Buffer): Promise<Outcome> {
+    if (stopping) return Promise.reject(new IngestUnavailable('The server is stopping.'))
+    return new Promise((resolve, reject) => {
+      const open = () => {
+        acceptNow(message, payload).then(resolve, reject)
+      }
+      large.add({ bytes: payload.length, open, giveUp: reject })
+      openLarge()
+    })
+  }
+
+  function openLarge(): void {
+    large.openWhile(() => line.size().readings < limits.maxRows)
+  }
+
+  function acceptNow(message: Received, payload: IngestMessage['payload']): Promise<Outcome> {
+    const known = channels.known(message.sender.deviceId)
     const decoded = known && decodePack(payload, known, message.receivedAtMs)
     return decoded && !decoded.unknownChannel ? enqueue(message, decoded) : acceptUnknown(message, payload)
   }
@@ -142,10 +138,8 @@ export function createIngest(options: IngestOptions): Ingest {
     if (waitMs <= 0) {
       clearTimeout(timer)
       timer = undefined
-      running = work().finally(() => {
-        running = undefined
-        wake()
-      })
+      runningSince = performance.now()
+      running = work()
     } else {
       timer ??= setTimeout(() => {
         timer = undefined
@@ -156,27 +150,41 @@ export function createIngest(options: IngestOptions): Ingest {
 
   async function work(): Promise<void> {
     const batch = line.take()
-    if (!batch) return
-    await store(batch)
-    updatePressure()
+    if (batch) {
+      const committed = await commit(batch)
+      next()
+      // The database has its next batch; what follows from this one is done meanwhile.
+      if (committed) settle(batch, committed)
+    } else {
+      next()
+    }
   }
 
-  async function store(batch: Batch): Promise<void> {
-    let committed: Committed
+  function next(): void {
+    running = undefined
+    updatePressure()
+    wake()
+    // Decoded while the database is at work.
+    openLarge()
+  }
+
+  /** @returns undefined when it was settled in parts */
+  async function commit(batch: Batch): Promise<Committed | undefined> {
     try {
-      committed = await retry.until(() => commitBatch(db, batch))
+      return await retry.until(() => commitBatch(db, batch))
     } catch (error) {
       if (batch.slices.length > 1 && !retry.stopped()) {
         // One message that cannot be stored must not hold up the others: find it by halving.
         const middle = Math.ceil(batch.slices.length / 2)
-        await store(part(batch, 0, middle))
-        await store(part(batch, middle, batch.slices.length))
+        for (const half of [part(batch, 0, middle), part(batch, middle, batch.slices.length)]) {
+          const committed = await commit(half)
+          if (committed) settle(half, committed)
+        }
       } else {
         for (const { job } of batch.slices) giveUp(job, error)
       }
-      return
+      return undefined
     }
-    settle(batch, committed)
   }
 
   function giveUp(job: Job, error: unknown): void {
@@ -186,20 +194,20 @@ export function createIngest(options: IngestOptions): Ingest {
 
   function settle(batch: Batch, committed: Committed): void {
     const now = performance.now()
-    publish(committed.stored)
+    const heard = new Map<number, Heard>()
     for (const { job, to } of batch.slices) {
       if (to < job.readings.length) continue
       delays.add(now - job.acceptedAt)
-      const { batteryPercent, signalDbm } = job
-      if (job.readings.length > 0 || batteryPercent !== undefined || signalDbm !== undefined) {
-        onHeard(job.sender.deviceId, { atMs: job.receivedAtMs, batteryPercent, signalDbm })
-      }
+      hear(heard, job)
       job.resolve(job.outcome)
     }
+    publish(committed.stored)
+    for (const [deviceId, ofDevice] of heard) onHeard(deviceId, ofDevice)
   }
 
   function publish(stored: Committed['stored']): void {
     for (const [siteSlug, readings] of stored) {
+      if (readings.length === 0) continue
       readings.sort((a, b) => a[1] - b[1])
       newestMs = Math.max(newestMs ?? -Infinity, ...readings.slice(-1).map(([, atMs]) => atMs))
       live.publish(siteSlug, { readings })
@@ -208,9 +216,9 @@ export function createIngest(options: IngestOptions): Ingest {
 
   function updatePressure(): void {
     const { readings, messages } = line.size()
-    const waiting = readings + messages
-    if (!pressed && waiting > limits.maxWaiting) setPressed(true)
-    else if (pressed && waiting < limits.maxWaiting / 2) setPressed(false)
+    const held = readings + messages
+    if (!pressed && held > limits.maxWaiting) setPressed(true)
+    else if (pressed && held < limits.maxWaiting / 2) setPressed(false)
   }
 
   function setPressed(on: boolean): void {
@@ -218,8 +226,13 @@ export function createIngest(options: IngestOptions): Ingest {
     onPressure(on)
   }
 
+  function waiting(): number {
+    return line.size().readings + Math.round(large.bytes() / recordBytes)
+  }
+
   async function stop(deadlineMs = 10_000): Promise<void> {
     stopping = true
+    large.giveUpAll(new IngestUnavailable('The server is stopping.'))
     const deadline = setTimeout(() => {
       retry.stop()
       for (const job of line.drain())
@@ -237,11 +250,11 @@ export function createIngest(options: IngestOptions): Ingest {
     isFull: () => pressed,
     refuse,
     metrics: () => ({
-      waiting: line.size().readings,
+      waiting: waiting(),
       delayMedianMs: delays.quantile(0.5),
       delayP99Ms: delays.quantile(0.99),
       newestReadingMs: newestMs,
-      databaseOk: retry.ok(),
+      databaseOk: retry.ok() && (running === undefined || performance.now() - runningSince < slowMs),
     }),
     stop,
   }

@@ -1,6 +1,7 @@
 import type { Knex } from 'knex'
 import { z } from 'zod'
-import { numberArray } from '../db/number-array.ts'
+import { rollUpLock } from '../history/roll-up-lock.ts'
+import { doubleArray, intArray, timeArray } from './binary-array.ts'
 
 /** A reading as it goes into the database. */
 export interface ReadingRow {
@@ -20,8 +21,8 @@ export interface Unstored {
 }
 
 /**
- * Stores readings and counts each stored one into its minute, late ones too, in one statement: either both happen or
- * neither. Rows whose key is there already change nothing and are told back.
+ * Stores readings, counts each stored one into its minute, late ones too, and notes the quarters of an hour that are to
+ * be rolled up anew, in one statement: either all happen or nothing. Rows whose key is there already change nothing and are told back.
  *
  * @param rows at most some thousands; keys may repeat
  */
@@ -34,23 +35,50 @@ export async function storeReadings(db: Knex, rows: readonly ReadingRow[]): Prom
 
 /** The database would take the first of two equal keys in one statement, but could not tell of the second. */
 function separateRepeats(rows: readonly ReadingRow[]): { firsts: number[]; repeats: number[] } {
-  const seen = new Map<number, Set<number>>()
+  const byChannel = new Map<number, SeenTimes>()
   const firsts: number[] = []
   const repeats: number[] = []
-  for (const [index, { channelId, atMs }] of rows.entries()) {
-    let times = seen.get(channelId)
-    if (!times) seen.set(channelId, (times = new Set()))
-    const before = times.size
-    ;(times.add(atMs).size > before ? firsts : repeats).push(index)
+  for (let index = 0; index < rows.length; index++) {
+    const row = rows[index]
+    if (row) (isFirst(byChannel, row) ? firsts : repeats).push(index)
   }
   return { firsts, repeats }
 }
 
+/** Times of one channel. As long as they rise, the newest alone tells a repeat. */
+interface SeenTimes {
+  newestMs: number
+  all: number[]
+  /** Made of `all` once a time is not newer than those before it. */
+  set: Set<number> | undefined
+}
+
+function isFirst(byChannel: Map<number, SeenTimes>, { channelId, atMs }: ReadingRow): boolean {
+  const seen = byChannel.get(channelId)
+  if (!seen) {
+    byChannel.set(channelId, { newestMs: atMs, all: [atMs], set: undefined })
+    return true
+  }
+  if (atMs > seen.newestMs) {
+    seen.newestMs = atMs
+    if (seen.set) seen.set.add(atMs)
+    else seen.all.push(atMs)
+    return true
+  }
+  seen.set ??= new Set(seen.all)
+  if (seen.set.has(atMs)) return false
+  seen.set.add(atMs)
+  return true
+}
+
 const insertStatement = `
-  with sent as (
-    select channel_id, to_timestamp(at_ms / 1000.0) as at, value, to_timestamp(received_ms / 1000.0) as received_at, place
-    from unnest(?::int[], ?::float8[], ?::float8[], ?::float8[])
-      with ordinality as s (channel_id, at_ms, value, received_ms, place)
+  with held as materialized (
+    select pg_advisory_xact_lock_shared(${rollUpLock})
+  ), sent as (
+    -- No row is touched before the lock is held.
+    select channel_id, at, value, received_at, place
+    from held cross join unnest(?::int[], ?::timestamptz[], ?::float8[], ?::timestamptz[])
+      with ordinality as s (channel_id, at, value, received_at, place)
   ), stored as (
     insert into readings (channel_id, at, value, received_at)
     select channel_id, at, value, received_at from sent order by channel_id, at
@@ -68,21 +96,28 @@ const insertStatement = `
       count = m.count + excluded.count,
       last = case when excluded.last_at > m.last_at then excluded.last else m.last end,
       last_at = greatest(m.last_at, excluded.last_at)
+    returning channel_id, minute
+  ), noted as (
+    insert into readings_due (channel_id, quarter)
+    -- In the order of the minutes, so that two batches never wait for each other.
+    select channel_id, date_bin('15 minutes', minute, '2000-01-01 00:00:00+00') from rolled_up
+    on conflict do nothing
   )
   select place::int as place from sent
   where (select count(*) from stored) < ?
     and not exists (select 1 from stored where stored.channel_id = sent.channel_id and stored.at = sent.at)`
 
 async function insert(db: Knex, rows: readonly ReadingRow[], firsts: readonly number[]): Promise<number[]> {
-  const answer: unknown = await db.raw(insertStatement, [...columns(rows, firsts), firsts.length])
+  const sent = firsts.length === rows.length ? rows : pick(rows, firsts)
+  const answer: unknown = await db.raw(insertStatement, [...columns(sent), sent.length])
   return Places.parse(answer).rows.map(({ place }) => firsts[place - 1] ?? -1)
 }
 
 const compareStatement = `
   select s.place::int as place, r.value
-  from unnest(?::int[], ?::float8[], ?::float8[], ?::float8[])
-    with ordinality as s (channel_id, at_ms, value, received_ms, place)
-  join readings r on r.channel_id = s.channel_id and r.at = to_timestamp(s.at_ms / 1000.0)
+  from unnest(?::int[], ?::timestamptz[], ?::float8[], ?::timestamptz[])
+    with ordinality as s (channel_id, at, value, received_at, place)
+  join readings r on r.channel_id = s.channel_id and r.at = s.at
   where r.value <> s.value`
 
 async function compare(
@@ -90,25 +125,22 @@ async function compare(
   rows: readonly ReadingRow[],
   unstored: readonly number[],
 ): Promise<Unstored[]> {
-  const answer: unknown = await db.raw(compareStatement, columns(rows, unstored))
+  const answer: unknown = await db.raw(compareStatement, columns(pick(rows, unstored)))
   const others = new Map(Others.parse(answer).rows.map(({ place, value }) => [place, value]))
   return unstored.map((index, at) => ({ index, otherValue: others.get(at + 1) }))
 }
 
-function columns(rows: readonly ReadingRow[], indices: readonly number[]): string[] {
-  const channels: number[] = []
-  const times: number[] = []
-  const values: number[] = []
-  const receipts: number[] = []
-  for (const index of indices) {
-    const row = rows[index]
-    if (!row) continue
-    channels.push(row.channelId)
-    times.push(row.atMs)
-    values.push(row.value)
-    receipts.push(row.receivedAtMs)
-  }
-  return [channels, times, values, receipts].map(numberArray)
+function pick(rows: readonly ReadingRow[], indices: readonly number[]): ReadingRow[] {
+  return indices.flatMap((index) => rows[index] ?? [])
+}
+
+function columns(rows: readonly ReadingRow[]): Buffer[] {
+  return [
+    intArray(rows.length, (index) => rows[index]?.channelId ?? 0),
+    timeArray(rows.length, (index) => rows[index]?.atMs ?? 0),
+    doubleArray(rows.length, (index) => rows[index]?.value ?? 0),
+    timeArray(rows.length, (index) => rows[index]?.receivedAtMs ?? 0),
+  ]
 }
 
 const Places = z.object({ rows: z.array(z.object({ place: z.number() })) })

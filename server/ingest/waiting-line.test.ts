@@ -14,6 +14,7 @@ function job(name: string, readings: number, ageMs = 0, deviceId = 1) {
         atMs: now - ageMs - index,
         value: 1,
         celsius: 1,
+        receivedAtMs: now,
       })),
       refused: [],
       batteryPercent: undefined,
@@ -39,7 +40,7 @@ describe('createWaitingLine', () => {
     expect(taken(line)).toBeUndefined()
   })
 
-  test('takes only a slice of old or large packs while there are live messages', () => {
+  test('takes only slices of old or large packs, after the live messages', () => {
     const line = made()
     line.add(job('large', 300), 0)
     line.add(job('old', 50, hourMs), 0)
@@ -48,17 +49,16 @@ describe('createWaitingLine', () => {
       ['live', 0, 10],
       ['large', 0, 20],
     ])
-    // Nobody else waits: as much as fits.
-    expect(taken(line)).toEqual([['large', 20, 120]])
+    expect(taken(line)).toEqual([['large', 20, 40]])
     line.add(job('live again', 90), 0)
     expect(taken(line)).toEqual([
       ['live again', 0, 90],
-      ['large', 120, 130],
+      ['large', 40, 50],
     ])
-    expect(taken(line)).toEqual([['large', 130, 230]])
+    for (let from = 50; from < 290; from += 20) expect(taken(line)).toEqual([['large', from, from + 20]])
     expect(taken(line)).toEqual([
-      ['large', 230, 300],
-      ['old', 0, 30],
+      ['large', 290, 300],
+      ['old', 0, 10],
     ])
   })
 
@@ -66,10 +66,7 @@ describe('createWaitingLine', () => {
     const line = made()
     line.add(job('large', 300), 0)
     const mixed = job('mixed', 30, hourMs)
-    line.add(
-      { ...mixed, readings: [...mixed.readings, { channelId: 1, atMs: now, value: 1, celsius: 1 }] },
-      0,
-    )
+    line.add({ ...mixed, readings: [...mixed.readings, ...job('fresh', 1).readings] }, 0)
     expect(taken(line)?.[0]).toEqual(['mixed', 0, 31])
   })
 

@@ -32,8 +32,8 @@ const largePack = 200
 
 /**
  * What waits for the database, in two lines: live messages in front, and behind them what devices kept through an
- * outage, of which each batch takes only a slice while there is live traffic. In each line the devices take turns, so
- * that one that floods holds up itself and no other.
+ * outage, of which each batch takes only a slice. In each line the devices take turns, so that one that floods holds
+ * up itself and no other.
  */
 export function createWaitingLine(limits: { maxRows: number; lateRows: number }): WaitingLine {
   const live = createTurns()
@@ -65,9 +65,8 @@ export function createWaitingLine(limits: { maxRows: number; lateRows: number })
     take: () => {
       const batch: Batch = { slices: [], rows: 0 }
       takeFrom(live, batch, limits.maxRows)
-      const room =
-        batch.slices.length > 0 ? Math.min(limits.maxRows, batch.rows + limits.lateRows) : limits.maxRows
-      takeFrom(late, batch, room)
+      // Also when nothing live waits: what comes in a moment would have to wait for the whole batch.
+      takeFrom(late, batch, Math.min(limits.maxRows, batch.rows + limits.lateRows))
       since = live.size() + late.size() > 0 ? -Infinity : undefined
       return batch.slices.length > 0 ? batch : undefined
     },

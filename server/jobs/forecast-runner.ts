@@ -1,4 +1,3 @@
-import type { Logger } from 'pino'
 import type { LiveChanges } from '#shared/contract/live.ts'
 import type { Clock } from '#shared/domain/clock.ts'
 import type { HouseModel } from '#shared/forecast/house-model.ts'
@@ -9,8 +8,7 @@ import { afterPull, onCalendar } from './stored-forecast.ts'
 
 export interface RunnerDeps {
   clock: Clock
-  log: Logger
-  cooks: Pick<CookSource, 'toForecast' | 'recordOf' | 'assemble'>
+  cooks: Pick<CookSource, 'recordOf' | 'assemble'>
   forecasts: Pick<ForecastsService, 'keep' | 'latestOf'>
   pool: Pick<ForecastPool, 'forecast'>
   /** What the house's past cooks taught; null for the general model. */
@@ -19,26 +17,18 @@ export interface RunnerDeps {
   publish: (siteSlug: string, changes: LiveChanges) => void
 }
 
-/** How the last round went. */
-export interface RunnerState {
-  /** When it ended, ms since 1970 UTC; null before the first. */
-  endedAt: number | null
-  pieces: number
-  failed: number
-  /** From reading the log to storing the answer, the last piece's, ms. */
-  lastRunMs: number | null
-}
-
 export type ForecastRunner = ReturnType<typeof createForecastRunner>
 
 /** Forecasts pieces and keeps what was said. A piece is never forecast twice at once. */
-export function createForecastRunner({ clock, log, cooks, forecasts, pool, house, publish }: RunnerDeps) {
-  const running = new Map<number, Promise<boolean>>()
+export function createForecastRunner({ clock, cooks, forecasts, pool, house, publish }: RunnerDeps) {
+  const running = new Map<number, Promise<void>>()
   const again = new Set<number>()
-  const state: RunnerState = { endedAt: null, pieces: 0, failed: 0, lastRunMs: null }
 
-  /** Forecasts a piece now; if that is being done already, once more after it. @returns whether it worked */
-  function run(pieceId: number): Promise<boolean> {
+  /**
+   * Forecasts a piece now; if that is being done already, once more after it.
+   * @throws what stood in the way
+   */
+  function run(pieceId: number): Promise<void> {
     const present = running.get(pieceId)
     if (present) {
       again.add(pieceId)
@@ -49,22 +39,10 @@ export function createForecastRunner({ clock, log, cooks, forecasts, pool, house
     return done
   }
 
-  async function repeat(pieceId: number): Promise<boolean> {
+  async function repeat(pieceId: number): Promise<void> {
     again.delete(pieceId)
-    const worked = await attempt(pieceId)
-    return again.has(pieceId) ? repeat(pieceId) : worked
-  }
-
-  async function attempt(pieceId: number): Promise<boolean> {
-    const begun = clock.now()
-    try {
-      await forecastPiece(pieceId)
-      state.lastRunMs = clock.now() - begun
-      return true
-    } catch (error) {
-      log.warn({ err: error, pieceId }, 'A piece could not be forecast; it is tried again within a minute')
-      return false
-    }
+    await forecastPiece(pieceId)
+    if (again.has(pieceId)) await repeat(pieceId)
   }
 
   async function forecastPiece(pieceId: number): Promise<void> {
@@ -91,24 +69,7 @@ export function createForecastRunner({ clock, log, cooks, forecasts, pool, house
     return pool.forecast(await cooks.assemble(record, now))
   }
 
-  return {
-    run,
-
-    /** One round over every piece that cooks, one after the other, so that a slow one delays nobody but forecasts. */
-    runAll: async (): Promise<void> => {
-      const pieces = await cooks.toForecast()
-      let failed = 0
-      for (const pieceId of pieces) if (!(await run(pieceId))) failed += 1
-      Object.assign(state, { endedAt: clock.now(), pieces: pieces.length, failed })
-    },
-
-    state: (): Readonly<RunnerState> => state,
-
-    /** Resolves once nothing is being forecast. */
-    async idle(): Promise<void> {
-      await Promise.all(running.values())
-    },
-  }
+  return { run }
 }
 
 /** Which model said it: its version, and from how many of the house's cooks it learned. */

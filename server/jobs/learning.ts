@@ -4,7 +4,7 @@ import type { Clock } from '#shared/domain/clock.ts'
 import type { HouseModel } from '#shared/forecast/house-model.ts'
 import type { AssembledCook, CookSource } from '../features/forecasts/service.ts'
 import type { ForecastPool } from './forecast-pool.ts'
-import { keepHouse, newestHouse } from './house-models.ts'
+import { keepHouse, newestHouse, newestHouseId } from './house-models.ts'
 
 export interface LearningDeps {
   db: Knex
@@ -17,31 +17,49 @@ export interface LearningDeps {
 /** A house's habits change: older cooks than these many are left out. */
 const mostCooks = 200
 
-/** Lets the forecast learn from the house's finished cooks whenever there are others than last time. */
-export function createLearning({ db, clock, log, cooks, pool }: LearningDeps) {
-  let known: { pieces: number; house: HouseModel | null } | undefined
+/** How old the knowledge of what others learned may be, ms. */
+const freshForMs = 50_000
 
-  /** Takes up what was learned before. */
-  async function load(): Promise<NonNullable<typeof known>> {
-    if (known) return known
-    known = (await newestHouse(db)) ?? { pieces: 0, house: null }
-    if (known.house) pool.useHouse(known.house)
-    return known
+/**
+ * Lets the forecast learn from the house's finished cooks whenever there are others than last time, in whatever
+ * process: what one learned the others take up.
+ */
+export function createLearning({ db, clock, log, cooks, pool }: LearningDeps) {
+  let known: { id: number; pieces: number; house: HouseModel | null } = { id: 0, pieces: 0, house: null }
+  let lookedAt = Number.NEGATIVE_INFINITY
+  let looking: Promise<void> | undefined
+
+  /** Takes up what was learned before, here or elsewhere. */
+  function load(): Promise<void> {
+    if (clock.now() - lookedAt < freshForMs) return Promise.resolve()
+    looking ??= look().finally(() => {
+      looking = undefined
+    })
+    return looking
+  }
+
+  async function look(): Promise<void> {
+    const id = await newestHouseId(db)
+    if (id !== known.id) {
+      const newest = await newestHouse(db)
+      known = newest ? { ...newest, id } : { ...known, id }
+      if (newest) pool.useHouse(newest.house)
+    }
+    lookedAt = clock.now()
   }
 
   return {
     /** What has been learned so far; null: nothing, the general model holds. */
-    house: (): HouseModel | null => known?.house ?? null,
+    house: (): HouseModel | null => known.house,
 
-    /** Takes up what was learned before; to be awaited before the first forecast. */
-    load: async (): Promise<void> => {
-      await load()
-    },
+    /** Takes up what was learned before; to be awaited before a forecast. */
+    load,
 
     /** Learns if there is something to learn. */
     learn: async (): Promise<void> => {
+      await look()
       const finished = await cooks.finished()
-      if (finished.length === (await load()).pieces) return
+      if (finished.length === known.pieces) return
       const lessons: AssembledCook[] = []
       for (const pieceId of finished.slice(-mostCooks)) {
         const record = await cooks.recordOf(pieceId)
@@ -50,10 +68,9 @@ export function createLearning({ db, clock, log, cooks, pool }: LearningDeps) {
       }
       const begun = clock.now()
       const house = await pool.learn(lessons)
-      const learned = { pieces: finished.length, house }
-      known = learned
+      const id = await keepHouse(db, { pieces: finished.length, house }, clock.now())
+      known = { id, pieces: finished.length, house }
       pool.useHouse(house)
-      await keepHouse(db, learned, clock.now())
       log.info({ cooks: house.cooks, ms: clock.now() - begun }, 'The forecast learned from finished cooks')
     },
   }

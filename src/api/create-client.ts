@@ -81,7 +81,7 @@ export function createClient(deps: ClientDeps): Client {
     input: LooseInput,
   ): Promise<z.output<E['response']>> {
     const response = await send(endpoint, input)
-    if (!response.ok) throw await problemOf(response)
+    if (!response.ok && response.status !== endpoint.unwellStatus) throw await problemOf(response)
     const answer = response.status === 204 ? undefined : await jsonOf(response)
     const parsed = z.safeParse<E['response']>(endpoint.response, answer)
     if (!parsed.success)

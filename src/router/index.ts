@@ -78,6 +78,12 @@ const routes: RouteRecordRaw[] = [
         component: () => import('@/views/devices/DevicesView.vue'),
         meta: { title: 'frame.title.devices', needs: 'device.view' },
       },
+      {
+        path: 'server',
+        name: 'server',
+        component: () => import('@/views/server/ServerView.vue'),
+        meta: { title: 'frame.title.server', needs: 'server.manage' },
+      },
     ],
   },
   {

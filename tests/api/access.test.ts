@@ -43,7 +43,10 @@ const name = ({ method, path }: Endpoint) => `${method.toUpperCase()} ${path}`
 const siteEndpoints = allEndpoints.flatMap((endpoint) =>
   endpoint.access.kind === 'site' ? [{ endpoint, access: endpoint.access, name: name(endpoint) }] : [],
 )
-const others = allEndpoints.filter(({ access }) => access.kind !== 'site')
+const houseEndpoints = allEndpoints.flatMap((endpoint) =>
+  endpoint.access.kind === 'any-site' ? [{ endpoint, access: endpoint.access, name: name(endpoint) }] : [],
+)
+const others = allEndpoints.filter(({ access }) => access.kind !== 'site' && access.kind !== 'any-site')
 
 describe.each(siteEndpoints)('$name', ({ endpoint, access }: { endpoint: Endpoint; access: SiteAccess }) => {
   it.each(roles)('lets in %s exactly when the matrix does', async (role) => {
@@ -70,6 +73,21 @@ describe.each(siteEndpoints)('$name', ({ endpoint, access }: { endpoint: Endpoin
     expect((await call(supertest.agent(test.url).auth(username, secret), endpoint, things.own)).status).toBe(
       401,
     )
+  })
+})
+
+describe.each(houseEndpoints)('$name', ({ endpoint, access }) => {
+  it.each(roles)('lets in %s exactly when the matrix does', async (role) => {
+    const { status } = await call(test.as(role), endpoint, {})
+    if (may([role], access.action)) expect([200, 400]).toContain(status)
+    else expect(status).toBe(403)
+  })
+
+  it('lets in whoever has the role at any site, and asks everyone else to sign in', async () => {
+    expect([200, 400]).toContain((await call(test.as('stranger'), endpoint, {})).status)
+    expect((await call(supertest.agent(test.url), endpoint, {})).status).toBe(401)
+    const { username, secret } = test.house.own.device
+    expect((await call(supertest.agent(test.url).auth(username, secret), endpoint, {})).status).toBe(401)
   })
 })
 

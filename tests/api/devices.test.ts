@@ -6,8 +6,10 @@ import { fileURLToPath } from 'node:url'
 import { promisify } from 'node:util'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
 import { z } from 'zod'
-import { Device, NewDevice, RejectedMessage } from '#shared/contract/device.ts'
+import { Device, NewDevice, NewDeviceSecret, RejectedMessage } from '#shared/contract/device.ts'
 import type { LiveChanges } from '#shared/contract/live.ts'
+import { systemClock } from '#shared/domain/clock.ts'
+import { closing, connectDevice } from '../broker/devices.ts'
 import { makePiece } from '../harness/house.ts'
 import { startTestServer, type TestServer } from '../harness/server.ts'
 
@@ -104,14 +106,18 @@ describe('what was rejected', () => {
   })
 })
 
+/** Runs a command on the test's house. */
+function command(script: string, ...args: string[]) {
+  return promisify(execFile)('npm', ['run', '--silent', script, '--', ...args], {
+    cwd: fileURLToPath(new URL('../../', import.meta.url)),
+    env: { ...process.env, DATABASE_URL: test.databaseUrl, DATA_DIR: dataDir },
+  })
+}
+const dataDir = mkdtempSync(join(tmpdir(), 'coalhand-device-'))
+afterAll(() => rmSync(dataDir, { recursive: true }))
+
 describe('device:create', () => {
-  const dataDir = mkdtempSync(join(tmpdir(), 'coalhand-device-'))
-  afterAll(() => rmSync(dataDir, { recursive: true }))
-  const deviceCreate = (...args: string[]) =>
-    promisify(execFile)('npm', ['run', '--silent', 'device:create', '--', ...args], {
-      cwd: fileURLToPath(new URL('../../', import.meta.url)),
-      env: { ...process.env, DATABASE_URL: test.databaseUrl, DATA_DIR: dataDir },
-    })
+  const deviceCreate = (...args: string[]) => command('device:create', ...args)
 
   it('prints one line of JSON, and a server that runs meanwhile knows the device', async () => {
     const { stdout } = await deviceCreate('--site', 'quarry-road', '--name', 'Bench box', '--channels', '3')
@@ -135,5 +141,51 @@ describe('device:create', () => {
       code: 1,
       stderr: expect.stringContaining('npm run --silent device:create --') as unknown,
     })
+  })
+})
+
+describe('device:secret', () => {
+  const deviceSecret = (...args: string[]) => command('device:secret', '--site', 'quarry-road', ...args)
+
+  it('prints one line of JSON with a new secret; the old one is good for the overlap', async () => {
+    const device = NewDevice.parse((await add({ name: 'Renewed box', channels: 1 }).expect(201)).body)
+    const { stdout } = await deviceSecret('--device', 'renewed-box', '--overlap-hours', '1')
+    expect(stdout.trim().split('\n')).toHaveLength(1)
+    const renewed = NewDeviceSecret.parse(JSON.parse(stdout))
+    expect(renewed).toMatchObject({ deviceId: device.deviceId, username: device.username })
+    const endsInMs = Date.parse(renewed.oldSecretEndsAt ?? '') - systemClock.now()
+    expect(endsInMs).toBeGreaterThan(55 * 60_000)
+    expect(endsInMs).toBeLessThan(61 * 60_000)
+    for (const secret of [renewed.secret, device.secret]) {
+      await send({ ...device, secret }, [{ n: '1', u: 'Cel', v: 70 }]).expect(200)
+    }
+  })
+
+  it('without a word about the overlap gives a day; a server lets go of whoever is connected at its end', async () => {
+    const device = NewDevice.parse((await add({ name: 'Cut box', channels: 1 }).expect(201)).body)
+    const box = await connectDevice(test.mqttPort, device)
+    const closed = closing(box)
+    const first = NewDeviceSecret.parse(JSON.parse((await deviceSecret('--device', 'cut-box')).stdout))
+    const inHours = (Date.parse(first.oldSecretEndsAt ?? '') - systemClock.now()) / 3_600_000
+    expect(inHours).toBeGreaterThan(23.9)
+    expect(inHours).toBeLessThan(24.1)
+    expect(box.connected).toBe(true)
+    await deviceSecret('--device', 'cut-box', '--overlap-hours', '0')
+    // The command is a process of its own: the server looks every few seconds.
+    await closed
+  })
+
+  it('says what is wrong and what there is', async () => {
+    await expect(deviceSecret('--device', 'nothing')).rejects.toMatchObject({
+      code: 1,
+      stdout: '',
+      stderr: expect.stringMatching(/quarry-road has no device “nothing”. There are: .*north-box/) as unknown,
+    })
+    for (const hours of ['soon', '', '-1', '10000']) {
+      await expect(deviceSecret('--device', 'north-box', `--overlap-hours=${hours}`)).rejects.toMatchObject({
+        code: 1,
+        stdout: '',
+      })
+    }
   })
 })

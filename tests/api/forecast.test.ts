@@ -2,7 +2,6 @@ import { randomUUID } from 'node:crypto'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
 import { z } from 'zod'
 import { PieceForecast, type LatestForecast } from '#shared/contract/forecast.ts'
-import { Health } from '#shared/contract/health.ts'
 import type { LiveChanges } from '#shared/contract/live.ts'
 import { Piece, PieceDetail } from '#shared/contract/piece.ts'
 import { systemClock } from '#shared/domain/clock.ts'
@@ -13,8 +12,8 @@ import { createForecastRunner } from '../../server/jobs/forecast-runner.ts'
 import { startTestServer, type TestServer } from '../harness/server.ts'
 
 const minute = 60_000
-/** Long enough that nothing within a test is the regular round, but for the first. */
-const jobs = { everyMs: 10 * minute }
+/** So that nothing within a test is a regular round, but for the first. */
+const jobs = { byTheClock: false }
 
 let server: TestServer
 const heard: LatestForecast[] = []
@@ -211,27 +210,20 @@ describe('forecasts', () => {
 })
 
 describe('trouble', () => {
-  it('with a worker that is late is told, costs that forecast only, and is over the next time', async () => {
+  it('with a worker that is late costs that forecast only, and is over the next time', async () => {
     const piece = await start({ label: 'late', channelId: channel(2) })
     await forecastOf(piece)
-    const warnings: string[] = []
-    const log = pino({ level: 'warn' }, { write: (line) => warnings.push(line) })
     const { forecasts } = server.server.services
     const made: LatestForecast[] = []
     const common = {
       clock: systemClock,
-      log,
       cooks: forecasts.cooks,
       forecasts,
       house: () => null,
       publish: (_: string, changes: LiveChanges) => made.push(...(changes.forecasts ?? [])),
     }
     const pool = createForecastPool({ withinMs: 1 })
-    const late = createForecastRunner({ ...common, pool })
-    await late.runAll()
-    expect(late.state().failed).toBeGreaterThan(0)
-    expect(late.state().failed).toBe(late.state().pieces)
-    expect(warnings.join('')).toContain('could not be forecast')
+    await expect(createForecastRunner({ ...common, pool }).run(piece.id)).rejects.toThrow(/abort/i)
     expect(made).toEqual([])
     await pool.stop()
 
@@ -243,25 +235,19 @@ describe('trouble', () => {
     await patient.stop()
   })
 
-  it('with the connection of the jobs passes', async () => {
-    const isOn = async () => {
-      const answer = await server.api.get('/api/health')
-      return Health.parse(answer.body).forecast.detail !== 'another process runs the forecasts'
-    }
-    expect(await isOn()).toBe(true)
-    await server.db.raw(
-      `select pg_terminate_backend(pid) from pg_stat_activity
-       where application_name = 'coalhand duty' and datname = current_database()`,
-    )
-    await until('the duty to be lost', async () => ((await isOn()) ? undefined : true))
-    await until('the duty to be taken again', async () => ((await isOn()) ? true : undefined))
+  it('with the connections of the jobs passes', async () => {
+    const killed = await server
+      .db('pg_stat_activity')
+      .whereRaw(`application_name = 'coalhand jobs' and datname = current_database()`)
+      .select(server.db.raw('pg_terminate_backend(pid)'))
+    expect(killed.length).toBeGreaterThan(0)
     const piece = await start({ label: 'after', channelId: channel(3) })
     await forecastOf(piece)
   })
 })
 
 describe('of two server processes', () => {
-  it('one makes the forecasts, and the other takes over when it goes', async () => {
+  it('either makes forecasts, and one goes on when the other goes', async () => {
     const second = composeServer({
       log: pino({ level: 'silent' }),
       tokenKey: 'a key for tests only, of no use elsewhere',
@@ -273,14 +259,15 @@ describe('of two server processes', () => {
     })
     listenTo(second)
     const { httpPort } = await second.start()
-    const detail = async () =>
-      Health.parse(await (await fetch(`http://127.0.0.1:${httpPort}/api/health`)).json()).forecast.detail
     try {
-      expect(await detail()).toBe('another process runs the forecasts')
       await server.server.stop()
-      await until('the second to take over', async () =>
-        (await detail()) === 'another process runs the forecasts' ? undefined : true,
-      )
+      heard.length = 0
+      const asked = await fetch(`http://127.0.0.1:${httpPort}/api/jobs/forecast/run`, {
+        method: 'POST',
+        headers: { authorization: `Bearer ${server.tokenOf('engineer')}` },
+      })
+      expect(asked.status).toBe(204)
+      await until('the second to forecast', () => heard.at(0))
     } finally {
       await second.stop()
     }

@@ -75,7 +75,7 @@ describe('with the database away', () => {
     await proxy.cut()
     const problem = problemOf(await behind.as('lead').get('/api/sites'), 503)
     expect(problem.detail).toBe('The database does not answer. Nothing was changed; try again shortly.')
-    const health = await behind.api.get('/api/health').expect(200)
+    const health = await behind.api.get('/api/health').expect(503)
     expect(health.body).toMatchObject({ ok: false, database: { ok: false, detail: 'does not answer' } })
 
     await proxy.mend()

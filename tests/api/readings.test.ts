@@ -242,6 +242,16 @@ describe('the line of a piece', () => {
     expect([at(answer.core, on), at(answer.core, on + 2 * 3_600_000)]).toEqual([10, 20])
     expect([at(answer.pit, on), at(answer.pit, moved + minuteMs)]).toEqual([30, 40])
     expect(answer.core.at.length).toBeGreaterThan(300)
+    // However many probes it had: a step in which one took over from another is one point.
+    const short = z
+      .object({ core: Trace, pit: Trace })
+      .parse(await get(`/api/pieces/${pieceId}/trace`, { points: 10 }))
+    for (const { at: times, low, high } of [short.core, short.pit]) {
+      expect(times.length).toBeLessThanOrEqual(10)
+      expect(times).toEqual([...new Set(times)].sort((a, b) => a - b))
+      expect(Math.min(...low.map(Number))).toBe(times === short.core.at ? 10 : 30)
+      expect(Math.max(...high.map(Number))).toBe(times === short.core.at ? 20 : 40)
+    }
   })
 
   it('is nothing before the piece is on', async () => {

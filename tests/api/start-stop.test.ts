@@ -69,6 +69,24 @@ it('answers what is under way, then stops, and stops but once', async () => {
   await test.stop()
 })
 
+it('gives up its jobs and closes their connections when it stops', async () => {
+  const test = await startTestServer({ jobs: {} })
+  const jobs = () =>
+    test.db('pg_stat_activity').where({ application_name: 'coalhand jobs' }).count({ count: '*' })
+  await expect.poll(jobs).not.toEqual([{ count: 0 }])
+  const begun = systemClock.now()
+  await test.server.stop()
+  // What is being done may end; nothing here takes long.
+  expect(systemClock.now() - begun).toBeLessThan(5000)
+  await expect.poll(jobs).toEqual([{ count: 0 }])
+  const locked = await test
+    .db('graphile_worker._private_jobs')
+    .whereNotNull('locked_by')
+    .count({ count: '*' })
+  expect(locked).toEqual([{ count: 0 }])
+  await test.stop()
+})
+
 /** How many are signed in to a database. */
 async function connectionsTo(databaseUrl: string): Promise<number> {
   const client = new pg.Client({ connectionString: inject('postgresUrl') })

@@ -1,12 +1,12 @@
 import { existsSync } from 'node:fs'
-import { readdir, rm } from 'node:fs/promises'
-import { tmpdir } from 'node:os'
+import { rm } from 'node:fs/promises'
 import { join } from 'node:path'
 import pg from 'pg'
 import type { TestProject } from 'vitest/node'
 import { migrateToLatest } from '../../server/db/migrate.ts'
 import { startPostgres } from '../../server/setup/postgres.ts'
 import { template, urlOfDatabase } from './postgres.ts'
+import { clearEarlierRuns, runFolder } from './run-folders.ts'
 
 const prefix = 'coalhand-test-'
 
@@ -15,8 +15,8 @@ const prefix = 'coalhand-test-'
  * starts it, the others join, the last to finish stops it. Safe as in earnest (fsync stays on); only roomier.
  */
 export default async function setup(project: TestProject): Promise<() => Promise<void>> {
-  await clearEarlierRuns()
-  const dataDir = join(tmpdir(), `${prefix}${process.pid}`)
+  await clearEarlierRuns(prefix)
+  const dataDir = runFolder(prefix)
   const server = await startPostgres({
     dataDir,
     log: () => undefined,
@@ -51,24 +51,4 @@ async function makeTemplate(url: string): Promise<void> {
   } finally {
     await client.end()
   }
-}
-
-/** Servers and folders of runs that were killed. */
-async function clearEarlierRuns(): Promise<void> {
-  for (const name of await readdir(tmpdir())) {
-    const pid = Number(name.slice(prefix.length))
-    if (!name.startsWith(prefix) || !Number.isInteger(pid) || existsSync(`/proc/${pid}`)) continue
-    await clear(join(tmpdir(), name)).catch((error: unknown) => {
-      // Another run may be clearing it at this moment; it is in nobody's way.
-      console.warn(`An earlier run's ${name} could not be cleared away: ${String(error)}`)
-    })
-  }
-}
-
-async function clear(dataDir: string): Promise<void> {
-  if (existsSync(join(dataDir, 'postgres/postmaster.pid'))) {
-    const left = await startPostgres({ dataDir, log: () => undefined })
-    await left.stop()
-  }
-  await rm(dataDir, { recursive: true, force: true })
 }

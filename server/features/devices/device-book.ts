@@ -5,18 +5,25 @@ import { isDatabaseAway } from '../../db/database-away.ts'
 import type { DeviceIdentity } from '../../http/mount.ts'
 import type { ChannelSource, KnownChannel, KnownChannels } from '../../ingest/known-device.ts'
 import { deviceRepository, type Credentials } from './repository.ts'
-import { isHashOf } from './secret.ts'
+import { hashOfSecret, isSameHash } from './secret.ts'
 import { sensorsOfChannels } from './sensor-rows.ts'
 
 /** Devices in memory: who may sign in, and which channels each has. */
 export interface DeviceBook extends ChannelSource {
-  /** The device that a user name and secret belong to; undefined when they do not. */
-  signIn: (username: string, secret: string) => Promise<DeviceIdentity | undefined>
+  /** The device that a user name and secret belong to, or why they do not. */
+  check: (username: string, secret: string) => Promise<Checked>
   /** Reads all devices, so that they can sign in and send even when the database goes away. */
   warm: () => Promise<void>
   /** Forgets what may have changed: of one device, or of all. */
   invalidate: (device?: { deviceId: number; username: string }) => void
 }
+
+/** What a user name and a secret are worth together. */
+export type Checked =
+  | { kind: 'in'; device: DeviceIdentity & { secretId: number } }
+  /** The name is a device's. */
+  | { kind: 'wrong-secret' | 'ended-secret'; deviceId: number }
+  | { kind: 'unknown' }
 
 /** After this, in ms, an entry is read anew: another process may have changed it. */
 const freshMs = 60_000
@@ -47,15 +54,33 @@ export function createDeviceBook({ db, clock }: { db: Knex; clock: Clock }): Dev
     return promise
   }
 
+  let asked = new Set<string>()
+  let askedTogether: Promise<void> | undefined
+  let invalidations = 0
+
+  /** All who sign in within one turn are looked up in one query. */
+  const readTogether = async (): Promise<void> => {
+    await new Promise((resolve) => setImmediate(resolve))
+    const usernames = asked
+    asked = new Set()
+    askedTogether = undefined
+    const before = invalidations
+    const found = await repository.credentials([...usernames])
+    const byName = new Map(found.map((one) => [one.device.username, one]))
+    // Names that nobody has would fill the memory.
+    if (byUsername.size > 10_000) byUsername.clear()
+    // What was changed while it was read must be read again.
+    const readAt = before === invalidations ? performance.now() : -Infinity
+    for (const username of usernames) byUsername.set(username, { value: byName.get(username), readAt })
+  }
+
   const readCredentials = (username: string) =>
     once(
       `user ${username}`,
       async () => {
-        const [value] = await repository.credentials(username)
-        // Names that nobody has would fill the memory.
-        if (byUsername.size > 10_000) byUsername.clear()
-        byUsername.set(username, { value, readAt: performance.now() })
-        return value
+        asked.add(username)
+        await (askedTogether ??= readTogether())
+        return byUsername.get(username)?.value
       },
       () => byUsername.get(username)?.value,
     )
@@ -85,25 +110,27 @@ export function createDeviceBook({ db, clock }: { db: Knex; clock: Clock }): Dev
       () => channels.get(deviceId)?.value ?? new Map(),
     )
 
-  const matches = (credentials: Credentials | undefined, secret: string) =>
-    credentials?.secrets.some(
-      ({ hash, expiresAtMs }) =>
-        (expiresAtMs === undefined || expiresAtMs > clock.now()) && isHashOf(hash, secret),
-    )
-      ? credentials.device
-      : undefined
+  const matching = (credentials: Credentials | undefined, given: Buffer): Checked => {
+    if (!credentials) return { kind: 'unknown' }
+    const { device, secrets } = credentials
+    const found = secrets.filter(({ hash }) => isSameHash(hash, given))
+    const good = found.find(({ expiresAtMs }) => expiresAtMs === undefined || expiresAtMs > clock.now())
+    if (good) return { kind: 'in', device: { ...device, secretId: good.id } }
+    return { kind: found.length > 0 ? 'ended-secret' : 'wrong-secret', deviceId: device.deviceId }
+  }
 
   return {
-    signIn: async (username, secret) => {
+    check: async (username, secret) => {
+      const given = hashOfSecret(secret)
       const entry = byUsername.get(username)
       const age = entry ? performance.now() - entry.readAt : Infinity
-      const device = matches(entry?.value, secret)
+      const known = matching(entry?.value, given)
       // A secret that does not fit may be newer than what is known here.
-      if (entry && (device ? age < freshMs : age < restMs)) return device
+      if (entry && (known.kind === 'in' ? age < freshMs : age < restMs)) return known
       try {
-        return matches(await readCredentials(username), secret)
+        return matching(await readCredentials(username), given)
       } catch (error) {
-        if (device && isDatabaseAway(error)) return device
+        if (known.kind === 'in' && isDatabaseAway(error)) return known
         throw error
       }
     },
@@ -137,6 +164,7 @@ export function createDeviceBook({ db, clock }: { db: Knex; clock: Clock }): Dev
     },
 
     invalidate: (device) => {
+      invalidations++
       if (device) {
         byUsername.delete(device.username)
         channels.delete(device.deviceId)

@@ -13,7 +13,7 @@ import type { DeviceIdentity } from '../../http/mount.ts'
 /** A device with the hashes of the secrets that let it in. */
 export interface Credentials {
   device: DeviceIdentity
-  secrets: { hash: Buffer; expiresAtMs: number | undefined }[]
+  secrets: { id: number; hash: Buffer; expiresAtMs: number | undefined }[]
 }
 
 /** What changed of a device; undefined fields did not. */
@@ -31,6 +31,7 @@ const IdentityRow = z.object({
   deviceSlug: z.string(),
   siteId: z.int(),
   siteSlug: z.string(),
+  secretId: z.int().nullable(),
   hash: z.instanceof(Buffer).nullable(),
   expiresAt: z.date().nullable(),
 })
@@ -128,8 +129,8 @@ export function deviceRepository(db: Knex) {
 
     withIds: (ids: readonly number[]): Promise<Device[]> => devicesWhere({ ids }),
 
-    /** Of one user name, or of every device. */
-    async credentials(username?: string): Promise<Credentials[]> {
+    /** Of some user names, or of every device. */
+    async credentials(usernames?: readonly string[]): Promise<Credentials[]> {
       const query = db('devices as d')
         .join('sites as s', 's.id', 'd.site_id')
         .leftJoin('device_secrets as secret', 'secret.device_id', 'd.id')
@@ -138,14 +139,17 @@ export function deviceRepository(db: Knex) {
           deviceSlug: 'd.slug',
           siteId: 's.id',
           siteSlug: 's.slug',
+          secretId: 'secret.id',
           hash: 'secret.secret_hash',
           expiresAt: 'secret.expires_at',
         })
-      const rows: unknown = await (username === undefined ? query : query.where('d.username', username))
+      const rows: unknown = await (usernames ? query.whereIn('d.username', usernames) : query)
       const byId = new Map<number, Credentials>()
-      for (const { hash, expiresAt, ...device } of z.array(IdentityRow).parse(rows)) {
+      for (const { secretId, hash, expiresAt, ...device } of z.array(IdentityRow).parse(rows)) {
         const credentials = byId.get(device.deviceId) ?? { device, secrets: [] }
-        if (hash) credentials.secrets.push({ hash, expiresAtMs: expiresAt?.getTime() })
+        if (hash && secretId !== null) {
+          credentials.secrets.push({ id: secretId, hash, expiresAtMs: expiresAt?.getTime() })
+        }
         byId.set(device.deviceId, credentials)
       }
       return [...byId.values()]

@@ -10,8 +10,7 @@ export function hashOfSecret(secret: string): Buffer {
   return createHash('sha256').update(secret).digest()
 }
 
-/** Whether a hash is the secret's, in a time that does not tell how much of it is. */
-export function isHashOf(hash: Buffer, secret: string): boolean {
-  const own = hashOfSecret(secret)
-  return hash.length === own.length && timingSafeEqual(hash, own)
+/** Whether two hashes are the same, in a time that does not tell how much of them is. */
+export function isSameHash(one: Buffer, other: Buffer): boolean {
+  return one.length === other.length && timingSafeEqual(one, other)
 }

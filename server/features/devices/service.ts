@@ -1,27 +1,35 @@
 import type { Knex } from 'knex'
-import type { Device, NewDevice, RejectedMessage } from '#shared/contract/device.ts'
+import type { Device, DeviceStatus, NewDevice, RejectedMessage } from '#shared/contract/device.ts'
 import type { LiveChanges } from '#shared/contract/live.ts'
 import { readingsTopic } from '#shared/contract/mqtt.ts'
 import type { Clock } from '#shared/domain/clock.ts'
-import { badRequest } from '../../http/problem.ts'
+import type { DeviceIdentity } from '../../http/mount.ts'
+import { badRequest, notFound } from '../../http/problem.ts'
 import { recordAudit } from '../audit/service.ts'
 import type { DeviceBook } from './device-book.ts'
+import type { DeviceConnections, DeviceOrigin } from './device-connections.ts'
 import { deviceRepository, type DeviceRepository } from './repository.ts'
 import { hashOfSecret, newSecret } from './secret.ts'
+import { createDeviceSecrets } from './secrets.ts'
 import { sensorsOfChannels } from './sensor-rows.ts'
 
 export interface DeviceDeps {
   db: Knex
   clock: Clock
-  book: Pick<DeviceBook, 'signIn' | 'invalidate'>
+  book: Pick<DeviceBook, 'check' | 'invalidate'>
+  /** Without it nobody connects here: a command's process. */
+  connections?: DeviceConnections | undefined
   /** Tells those who watch a site what changed there. */
   publish: (siteSlug: string, changes: LiveChanges) => void
 }
 
 export type DeviceService = ReturnType<typeof createDeviceService>
 
-export function createDeviceService({ db, clock, book, publish }: DeviceDeps) {
+export function createDeviceService({ db, clock, book, connections, publish }: DeviceDeps) {
   const repository = deviceRepository(db)
+
+  const statusesOf = (devices: readonly Device[], options: { withAddresses: boolean }) =>
+    connections?.statuses(devices, options) ?? Promise.resolve([])
 
   return {
     /**
@@ -69,14 +77,47 @@ export function createDeviceService({ db, clock, book, publish }: DeviceDeps) {
 
     listOfSite: (siteId: number): Promise<Device[]> => repository.ofSite(siteId),
 
-    /** The device that a user name and secret belong to; undefined when they do not. */
-    signIn: book.signIn,
+    /** How each device of a site is connected. */
+    async statuses(siteId: number, options: { withAddresses: boolean }): Promise<DeviceStatus[]> {
+      return statusesOf(await repository.ofSite(siteId), options)
+    },
+
+    /** @throws HttpProblem 404 when there is no such device */
+    async status(deviceId: number, options: { withAddresses: boolean }): Promise<DeviceStatus> {
+      const [status] = await statusesOf(await repository.withIds([deviceId]), options)
+      if (!status) throw notFound()
+      return status
+    },
+
+    /** Which secrets let a device in, a new one, and the end of an old one. */
+    secrets: createDeviceSecrets({ db, clock, book, connections }),
+
+    /** The device that a user name and secret belong to; undefined when they do not, which is noted on the device. */
+    signIn: async (
+      username: string,
+      secret: string,
+      origin: DeviceOrigin,
+    ): Promise<(DeviceIdentity & { secretId: number }) | undefined> => {
+      const checked = await book.check(username, secret)
+      if (checked.kind === 'unknown') return undefined
+      if (checked.kind !== 'in') {
+        const { transport, remoteAddress } = origin
+        const detail = `user name ${username}, by ${transport}`
+        connections?.trouble(checked.deviceId, { kind: checked.kind, detail, remoteAddress })
+        return undefined
+      }
+      connections?.signedIn(checked.device, origin)
+      return checked.device
+    },
 
     /** The sensors that have hung on channels: what their values mean at each time. */
     sensorsOf: (channelIds: readonly number[]) => sensorsOfChannels(db, channelIds),
 
     /** To call once at start, before any device connects. */
-    markAllOffline: () => repository.markAllOffline(),
+    async markAllOffline(): Promise<void> {
+      await repository.markAllOffline()
+      await connections?.endAll()
+    },
 
     /** What the site's devices sent and was not taken, newest first. */
     async rejected(

@@ -9,7 +9,7 @@ import { piecesRepository } from './repository.ts'
 
 /**
  * Renews everything that follows from a piece's events: where it stands in its night, on which cookers it stood, how
- * long its probes were in it. Tells the forecast job once the transaction is through.
+ * long its probes were in it. News asks for a forecast once the transaction is through.
  * @param options.news the event that was just added, when there must be room for what it says
  * @throws HttpProblem 422 when the events contradict one another or name a cooker of another site, 409 when a cooker is full
  */
@@ -33,7 +33,8 @@ export async function applyEvents(
   await piecesRepository(trx).saveProjection(piece.id, projection)
   await placementsRepository(trx).replace(piece.id, projection.placements)
   await probesRepository(trx).follow(piece.id, before, projection)
-  await piecesRepository(trx).announce([piece.id])
+  // What is told of long ago asks for nothing: the next round finds what still cooks.
+  if (options.news) await piecesRepository(trx).announce([piece.id])
 }
 
 /** The cooker that an event puts a piece onto. */

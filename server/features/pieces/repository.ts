@@ -4,6 +4,7 @@ import { WrapMethodName } from '#shared/contract/event.ts'
 import { PieceStage, type Piece, type PieceChange } from '#shared/contract/piece.ts'
 import type { PieceProjection } from '#shared/domain/piece-projection.ts'
 import type { WrapMethod } from '#shared/domain/cooking.ts'
+import { askForForecasts } from '../jobs/service.ts'
 
 /** A piece about to be made. Temperatures in °C, mass in kg, moments in ms since 1970 UTC. */
 export interface PieceToStore {
@@ -115,12 +116,9 @@ export function piecesRepository(db: Knex) {
         .update({ version: db.raw('version + 1') })
     },
 
-    /** Tells the forecast job, in whatever process it runs, once the transaction is through. */
+    /** Asks for new forecasts, to be made in whatever process once the transaction is through. */
     async announce(pieceIds: readonly number[]): Promise<void> {
-      if (pieceIds.length === 0) return
-      await db.raw(`select pg_notify('${pieceChannel}', id::text) from unnest(?::int[]) as id`, [
-        [...pieceIds],
-      ])
+      await askForForecasts(db, pieceIds)
     },
 
     async isServiceOf(siteId: number, serviceId: number): Promise<boolean> {
@@ -129,9 +127,6 @@ export function piecesRepository(db: Knex) {
     },
   }
 }
-
-/** PostgreSQL's notification channel on which changed pieces are announced, by number. */
-export const pieceChannel = 'coalhand_pieces'
 
 const Ids = z.tuple([z.object({ id: z.number() })])
 

@@ -14,7 +14,6 @@ import { piecesRepository, type PieceToStore, type WhichPieces } from './reposit
 import { noService, startPiece, type By } from './start-piece.ts'
 
 export { applyEvents } from './apply-events.ts'
-export { pieceChannel } from './repository.ts'
 export type { By } from './start-piece.ts'
 
 export interface PiecesDeps {

@@ -1,122 +1,95 @@
 import type { Knex } from 'knex'
-import { z } from 'zod'
 import { celsiusOf, type Sensor, type SensorSpan } from '#shared/domain/sensor.ts'
-import { numberArray } from '../../db/number-array.ts'
-
-/** A part of a line: one channel over a half-open span, in milliseconds since 1970 UTC. */
-export interface LinePart {
-  channelId: number
-  fromMs: number
-  toMs: number
-}
+import { givenUpBefore } from '../../history/drop-old-partitions.ts'
+import { cutAtSensors, windowsOf, type LinePart } from './cuts.ts'
+import { readSteps, type StoredStep } from './line-queries.ts'
+import type { Resolution } from './resolution.ts'
 
 /** A step of a line: the mean of its readings and their extremes, in °C. */
 export interface LinePoint {
+  /** The middle of its readings, ms since 1970 UTC. */
   atMs: number
   celsius: number
   low: number
   high: number
 }
 
-/** From here on lines are drawn from the one-minute roll-up, in ms. */
-export const rolledUpFromMs = 3600 * 1000
-const minuteMs = 60 * 1000
-
-/** How wide a step is, so that a span has at most so many: whole minutes where the roll-up is read; in ms. */
-export function stepFor(spanMs: number, points: number): number {
-  // A span may begin in the middle of a step: one more step than the division says.
-  const exact = Math.max(1, spanMs / Math.max(1, points - 1))
-  return spanMs > rolledUpFromMs ? Math.ceil(exact / minuteMs) * minuteMs : Math.ceil(exact)
-}
-
 /**
- * The points of parts of lines, in °C by the sensor of each time, in one query. Steps are cut at the same moments for
- * every part, so that lines of one chart stand below each other.
+ * The points of lines, each a sequence of parts, in °C by the sensor of each time. Steps are cut at the same moments
+ * for every line, so that the lines of one chart stand below each other; a step has one point, whatever changed in it.
  *
- * @returns for each part its points, from the oldest on
+ * @returns for each line its points, from the oldest on
  */
 export async function readLines(
   db: Knex,
-  parts: readonly LinePart[],
-  options: {
-    stepMs: number
-    rolledUp: boolean
-    sensorsOf: (channelIds: readonly number[]) => Promise<Map<number, SensorSpan[]>>
-  },
+  lines: readonly (readonly LinePart[])[],
+  { source, stepMs }: Resolution,
+  sensorsOf: (channelIds: readonly number[]) => Promise<Map<number, SensorSpan[]>>,
 ): Promise<LinePoint[][]> {
-  const sensors = await options.sensorsOf([...new Set(parts.map(({ channelId }) => channelId))])
-  const pieces = parts.flatMap((part, partIndex) =>
-    cutAtSensors(part, sensors.get(part.channelId) ?? []).map((cut) => ({ ...cut, partIndex })),
+  const parts = lines.flatMap((line, index) => line.map((part) => ({ ...part, line: index })))
+  const [sensors, areReadingsGone] = await Promise.all([
+    sensorsOf([...new Set(parts.map(({ channelId }) => channelId))]),
+    source === 'readings' ? areGivenUp(db, parts) : Promise.resolve(false),
+  ])
+  const usable = areReadingsGone ? 'minutes' : source
+  const cuts = parts.flatMap((part) =>
+    cutAtSensors(part, sensors.get(part.channelId) ?? []).map((cut) => ({ ...cut, part })),
   )
-  const lines: LinePoint[][] = parts.map(() => [])
-  if (pieces.length === 0) return lines
-  const found: unknown = await db.raw(options.rolledUp ? fromRollUp : fromReadings, {
-    step: options.stepMs,
-    channels: numberArray(pieces.map(({ channelId }) => channelId)),
-    froms: numberArray(pieces.map(({ fromMs }) => fromMs)),
-    tos: numberArray(pieces.map(({ toMs }) => toMs)),
-  })
-  for (const row of Rows.parse(found).rows) {
-    const piece = pieces[row.place - 1]
-    const point = piece && pointOf(row, piece.sensor)
-    if (piece && point) lines[piece.partIndex]?.push(point)
+  const windows = cuts.flatMap((cut, place) => windowsOf(cut, cut.part, place, usable))
+  const steps: StoredStep[][] = lines.map(() => [])
+  for (const stored of await readSteps(db, cuts, windows, stepMs)) {
+    const cut = cuts[stored.place]
+    const step = cut && inCelsius(stored, cut.sensor)
+    if (step) steps[cut.part.line]?.push(step)
   }
-  return lines
+  return steps.map((ofLine) => onePointAStep(ofLine, stepMs))
 }
 
-const fromRollUp = `
-  select s.place::int as place, step.*
-  from unnest(:channels::int[], :froms::float8[], :tos::float8[]) with ordinality as s (channel_id, from_ms, to_ms, place)
-  cross join lateral (
-    select (extract(epoch from min(minute))::float8 + extract(epoch from max(last_at))::float8) * 500 as at_ms,
-      sum(total) / sum(count) as mean, min(low) as low, max(high) as high
-    from readings_1m
-    where channel_id = s.channel_id
-      and minute >= to_timestamp(s.from_ms / 1000.0) and minute < to_timestamp(s.to_ms / 1000.0)
-    group by floor(extract(epoch from minute)::float8 * 1000 / :step::float8)
-  ) as step
-  order by place, at_ms`
-
-const fromReadings = `
-  select s.place::int as place, step.*
-  from unnest(:channels::int[], :froms::float8[], :tos::float8[]) with ordinality as s (channel_id, from_ms, to_ms, place)
-  cross join lateral (
-    select (extract(epoch from min(at))::float8 + extract(epoch from max(at))::float8) * 500 as at_ms,
-      avg(value) as mean, min(value) as low, max(value) as high
-    from readings
-    where channel_id = s.channel_id
-      and at >= to_timestamp(s.from_ms / 1000.0) and at < to_timestamp(s.to_ms / 1000.0)
-    group by floor(extract(epoch from at)::float8 * 1000 / :step::float8)
-  ) as step
-  order by place, at_ms`
-
-const Row = z.object({
-  place: z.int(),
-  at_ms: z.number(),
-  mean: z.number(),
-  low: z.number(),
-  high: z.number(),
-})
-const Rows = z.object({ rows: z.array(Row) })
-
-/** A part is read in the pieces during which one sensor hung on its channel, oldest first. */
-function cutAtSensors(part: LinePart, spans: readonly SensorSpan[]): (LinePart & { sensor: Sensor })[] {
-  return spans
-    .map(({ fromMs, toMs, sensor }) => ({
-      channelId: part.channelId,
-      fromMs: Math.max(part.fromMs, fromMs),
-      toMs: Math.min(part.toMs, toMs),
-      sensor,
-    }))
-    .filter(({ fromMs, toMs }) => fromMs < toMs)
-    .sort((a, b) => a.fromMs - b.fromMs)
+/** Whether some of the readings asked for are no more, so that only their minutes can be drawn. */
+async function areGivenUp(db: Knex, parts: readonly LinePart[]): Promise<boolean> {
+  const before = await givenUpBefore(db)
+  return before !== undefined && parts.some(({ fromMs }) => fromMs < before)
 }
 
 /** The curve of a thermistor falls: its lowest value is the highest temperature. */
-function pointOf(row: z.infer<typeof Row>, sensor: Sensor): LinePoint | undefined {
-  const celsius = celsiusOf(sensor, row.mean)
-  const ends = [celsiusOf(sensor, row.low), celsiusOf(sensor, row.high)]
-  const [one, other] = ends
-  if (celsius === undefined || one === undefined || other === undefined) return undefined
-  return { atMs: Math.round(row.at_ms), celsius, low: Math.min(one, other), high: Math.max(one, other) }
+function inCelsius(step: StoredStep, sensor: Sensor): StoredStep | undefined {
+  const mean = sensor.kind === 'thermistor' ? step.mean + sensor.offsetC : celsiusOf(sensor, step.mean)
+  const one = celsiusOf(sensor, step.low)
+  const other = celsiusOf(sensor, step.high)
+  if (mean === undefined || one === undefined || other === undefined) return undefined
+  // Field by field: spreading the rest of an object took longer than all else here together.
+  return {
+    place: step.place,
+    atMs: step.atMs,
+    count: step.count,
+    mean,
+    low: Math.min(one, other),
+    high: Math.max(one, other),
+  }
+}
+
+/** Steps in the order of time; those that fall into the same one, of two probes or sensors, become one point. */
+function onePointAStep(steps: StoredStep[], stepMs: number): LinePoint[] {
+  steps.sort((a, b) => a.atMs - b.atMs)
+  const points: StoredStep[] = []
+  for (const step of steps) {
+    const before = points.at(-1)
+    if (before && Math.floor(before.atMs / stepMs) === Math.floor(step.atMs / stepMs)) {
+      points[points.length - 1] = joined(before, step)
+    } else points.push(step)
+  }
+  return points.map(({ atMs, mean, low, high }) => ({ atMs: Math.round(atMs), celsius: mean, low, high }))
+}
+
+function joined(one: StoredStep, other: StoredStep): StoredStep {
+  const count = one.count + other.count
+  const meanOf = (a: number, b: number) => (a * one.count + b * other.count) / count
+  return {
+    place: one.place,
+    atMs: meanOf(one.atMs, other.atMs),
+    count,
+    mean: meanOf(one.mean, other.mean),
+    low: Math.min(one.low, other.low),
+    high: Math.max(one.high, other.high),
+  }
 }

@@ -1,7 +1,7 @@
 import type { Knex } from 'knex'
 import { z } from 'zod'
 import { numberArray } from '../../db/number-array.ts'
-import type { LinePart } from './lines.ts'
+import type { LinePart } from './cuts.ts'
 
 /** A reading as it was sent; moments in milliseconds since 1970 UTC. */
 export interface StoredReading {

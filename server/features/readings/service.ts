@@ -9,8 +9,10 @@ import { celsiusOf, sensorAt, unitOfSensor, type SensorSpan } from '#shared/doma
 import type { DeviceIdentity } from '../../http/mount.ts'
 import { badRequest, notFound, unavailable } from '../../http/problem.ts'
 import { IngestUnavailable, type Ingest } from '../../ingest/ingest.ts'
-import { readLines, rolledUpFromMs, stepFor, type LinePart } from './lines.ts'
+import type { LinePart } from './cuts.ts'
+import { readLines } from './lines.ts'
 import { readingRepository } from './repository.ts'
+import { resolutionFor } from './resolution.ts'
 import { inSequence, traceOf } from './trace.ts'
 
 export interface ReadingDeps {
@@ -41,16 +43,16 @@ const sendAgain = 'Readings cannot be stored just now. Send them again.'
 export function createReadingService({ db, clock, sensorsOf, ingest }: ReadingDeps) {
   const repository = readingRepository(db)
 
-  /** One line out of parts that follow each other; null when there is none. */
-  const lineThrough = async (parts: readonly LinePart[], points: number): Promise<Trace | null> => {
-    const sequence = inSequence(parts)
-    const [first] = sequence
-    const last = sequence.at(-1)
-    if (!first || !last) return null
-    const spanMs = last.toMs - first.fromMs
-    const stepMs = stepFor(spanMs, points)
-    const lines = await readLines(db, sequence, { stepMs, rolledUp: spanMs > rolledUpFromMs, sensorsOf })
-    return traceOf(last.channelId, lines.flat(), stepMs)
+  /** Each of the lines out of parts that follow each other; null where there is none. */
+  const linesThrough = async (lines: readonly LinePart[][], points: number): Promise<(Trace | null)[]> => {
+    const sequences = lines.map(inSequence)
+    const spans = sequences.map((parts) => (parts.at(-1)?.toMs ?? 0) - (parts[0]?.fromMs ?? 0))
+    const resolution = resolutionFor(Math.max(...spans), points)
+    const found = await readLines(db, sequences, resolution, sensorsOf)
+    return sequences.map((parts, index) => {
+      const last = parts.at(-1)
+      return last ? traceOf(last.channelId, found[index] ?? [], resolution.stepMs) : null
+    })
   }
 
   return {
@@ -122,16 +124,15 @@ export function createReadingService({ db, clock, sensorsOf, ingest }: ReadingDe
       return { from: query.from, to: query.to, traces }
     },
 
-    /** Lines of channels over a span: the one-minute roll-up beyond an hour, the readings themselves below. */
+    /** Lines of channels over a span, from the readings or the roll-up that fits. */
     async traceOfChannels(
       channelIds: readonly number[],
       { fromMs, toMs, points }: { fromMs: number; toMs: number; points: number },
     ): Promise<Trace[]> {
-      const spanMs = toMs - fromMs
-      const stepMs = stepFor(spanMs, points)
-      const parts = channelIds.map((channelId) => ({ channelId, fromMs, toMs }))
-      const lines = await readLines(db, parts, { stepMs, rolledUp: spanMs > rolledUpFromMs, sensorsOf })
-      return channelIds.map((channelId, index) => traceOf(channelId, lines[index] ?? [], stepMs))
+      const resolution = resolutionFor(toMs - fromMs, points)
+      const lines = channelIds.map((channelId) => [{ channelId, fromMs, toMs }])
+      const found = await readLines(db, lines, resolution, sensorsOf)
+      return channelIds.map((channelId, index) => traceOf(channelId, found[index] ?? [], resolution.stepMs))
     },
 
     /** A piece's own temperature and that of the pits it stood in, each null where no probe was. */
@@ -141,17 +142,14 @@ export function createReadingService({ db, clock, sensorsOf, ingest }: ReadingDe
     ): Promise<{ core: Trace | null; pit: Trace | null }> {
       const parts = await repository.partsOfPiece(pieceId, clock.now())
       if (!parts) return { core: null, pit: null }
-      const [core, pit] = await Promise.all([lineThrough(parts.core, points), lineThrough(parts.pit, points)])
+      const [core = null, pit = null] = await linesThrough([parts.core, parts.pit], points)
       return { core, pit }
     },
 
     /** A channel minute by minute, the mean of each, from the oldest on; minutes without a reading are left out. */
     async seriesOf(channelId: number, fromMs: number, toMs: number): Promise<Series> {
-      const [points = []] = await readLines(db, [{ channelId, fromMs, toMs }], {
-        stepMs: minuteMs,
-        rolledUp: true,
-        sensorsOf,
-      })
+      const eachMinute = { source: 'minutes', stepMs: minuteMs } as const
+      const [points = []] = await readLines(db, [[{ channelId, fromMs, toMs }]], eachMinute, sensorsOf)
       return {
         at: Float64Array.from(points, ({ atMs }) => atMs),
         c: Float64Array.from(points, ({ celsius }) => celsius),

@@ -1,5 +1,4 @@
 import { describe, expect, test } from 'vitest'
-import { rolledUpFromMs, stepFor } from './lines.ts'
 import { inSequence, traceOf } from './trace.ts'
 
 const point = (atMs: number, celsius: number) => ({ atMs, celsius, low: celsius - 1, high: celsius + 1 })
@@ -31,22 +30,5 @@ describe('inSequence', () => {
       { channelId: 1, fromMs: 0, toMs: 50 },
       { channelId: 2, fromMs: 50, toMs: 80 },
     ])
-  })
-})
-
-describe('stepFor', () => {
-  test.each([
-    [14 * 3_600_000, 720],
-    [14 * 3_600_000, 1500],
-    [3_600_001, 60],
-    [3_600_000, 1500],
-    [7 * 24 * 3_600_000, 1000],
-    [1000, 10],
-  ])('%d ms with at most %d points', (spanMs, points) => {
-    const step = stepFor(spanMs, points)
-    // The worst place to begin is one millisecond before a step's end.
-    expect(1 + Math.ceil((spanMs - 1) / step)).toBeLessThanOrEqual(points + 1)
-    expect(Math.floor((step - 1 + spanMs - 1) / step) + 1).toBeLessThanOrEqual(points)
-    if (spanMs > rolledUpFromMs) expect(step % 60_000).toBe(0)
   })
 })

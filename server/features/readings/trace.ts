@@ -1,5 +1,6 @@
 import type { Trace } from '#shared/contract/reading.ts'
-import type { LinePart, LinePoint } from './lines.ts'
+import type { LinePart } from './cuts.ts'
+import type { LinePoint } from './lines.ts'
 
 /** Readings further apart than this, in ms, or than three steps, have a gap between them. */
 const gapMs = 3 * 60 * 1000

@@ -14,4 +14,5 @@ export const sitePages: readonly SitePage[] = [
   { name: 'pieces', title: 'frame.title.pieces', needs: 'history.view' },
   { name: 'cookers', title: 'frame.title.cookers', needs: 'site.view' },
   { name: 'devices', title: 'frame.title.devices', needs: 'device.view' },
+  { name: 'server', title: 'frame.title.server', needs: 'server.manage' },
 ]

@@ -9,6 +9,7 @@ export const frame = {
     start: 'Start a piece',
     cookers: 'Cookers',
     devices: 'Devices',
+    server: 'Server',
     notFound: 'Not here',
     noServer: 'No server',
   },

@@ -8,6 +8,7 @@ export const frame = {
     start: 'Empezar una pieza',
     cookers: 'Ahumadores',
     devices: 'Equipos',
+    server: 'Servidor',
     notFound: 'No está aquí',
     noServer: 'Sin servidor',
   },

@@ -23,8 +23,13 @@ export interface SiteAccess {
   action: Action
   by: SiteSource
 }
+/** A person whose roles at any one site allow the action: for what belongs to the house rather than to a site. */
+export interface AnySiteAccess {
+  kind: 'any-site'
+  action: Action
+}
 /** Who may call an endpoint. */
-export type Access = PublicAccess | SignedInAccess | DeviceAccess | SiteAccess
+export type Access = PublicAccess | SignedInAccess | DeviceAccess | SiteAccess | AnySiteAccess
 
 /**
  * One HTTP endpoint: the server mounts it, the client calls it, the OpenAPI page is made from it.
@@ -48,6 +53,8 @@ export interface Endpoint<
   body: Body
   response: Response
   status: 200 | 201 | 204
+  /** A status that the handler may set instead, for the same answer: what is asked about is not well. */
+  unwellStatus?: 503
   /** Answers carry an `ETag`; a change must name it in `If-Match`. */
   versioned?: boolean
 }
@@ -66,4 +73,9 @@ export function endpoint<
 /** Access by a role at the site that the named path parameter belongs to. */
 export function atSite(action: Action, by: SiteSource = 'site'): SiteAccess {
   return { kind: 'site', action, by }
+}
+
+/** Access by a role at any site of the house. */
+export function atAnySite(action: Action): AnySiteAccess {
+  return { kind: 'any-site', action }
 }

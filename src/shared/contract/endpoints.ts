@@ -4,6 +4,7 @@ import { deviceEndpoints } from './device.ts'
 import { eventEndpoints } from './event.ts'
 import { forecastEndpoints } from './forecast.ts'
 import { healthEndpoints } from './health.ts'
+import { jobEndpoints } from './job.ts'
 import { pieceEndpoints } from './piece.ts'
 import { readingEndpoints } from './reading.ts'
 import { sessionEndpoints } from './session.ts'
@@ -20,4 +21,5 @@ export const allEndpoints: readonly Endpoint[] = [
   deviceEndpoints,
   readingEndpoints,
   healthEndpoints,
+  jobEndpoints,
 ].flatMap((group) => Object.values<Endpoint>(group))

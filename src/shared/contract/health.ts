@@ -18,7 +18,20 @@ export const Health = z
       delayMedianMs: z.number().nullable(),
       delayP99Ms: z.number().nullable(),
     }),
+    live: Part.extend({ connections: z.int() }),
+    /** `pieces` that are being forecast, and how long the last one took, in milliseconds. */
     forecast: Part.extend({ pieces: z.int(), lastRunMs: z.number().nullable() }),
+    /** What runs without a request, in the whole house. */
+    jobs: Part.extend({
+      /** Jobs that are due and wait for a free hand. */
+      waiting: z.int(),
+      /** How long the first of them has waited, in seconds: the queue's delay. */
+      oldestWaitingS: z.number().nullable(),
+      /** Jobs whose last attempt failed. */
+      failing: z.int(),
+      /** Attempts that failed in the last hour. */
+      failedLastHour: z.int(),
+    }),
     newestReadingAt: Instant.nullable(),
   })
   .meta({ id: 'Health' })
@@ -29,12 +42,14 @@ export const healthEndpoints = {
     method: 'get',
     path: '/api/health',
     tag: 'Health',
-    summary: 'Whether database, broker, ingest and forecast work, and how fresh the newest reading is',
+    summary:
+      'Whether database, broker, ingest, live pages, forecasts and jobs work, and how fresh the newest reading is; 503 when readings cannot be stored',
     access: { kind: 'public' },
     params: Nothing,
     query: Nothing,
     body: NoBody,
     response: Health,
     status: 200,
+    unwellStatus: 503,
   }),
 }

@@ -19,5 +19,9 @@ export function parseDeviceTopic(topic: string): DeviceTopic | undefined {
   return leaf === 'readings' ? { site, device, leaf } : { site, device, leaf: 'status' }
 }
 
+/** Path of MQTT over WebSocket on the HTTP port, and the subprotocol that a client offers [MQTT-6.0.0-3]. */
+export const mqttPath = '/mqtt'
+export const mqttSubprotocol = 'mqtt'
+
 /** The largest packet a device may send, in bytes; above it the connection is closed. */
 export const maxPayloadBytes = 64 * 1024

@@ -17,6 +17,7 @@ export const matrix = {
   'cooker.edit': ['lead', 'engineer', 'owner'],
   'device.view': ['lead', 'manager', 'engineer', 'owner'],
   'device.manage': ['engineer', 'owner'],
+  'server.manage': ['engineer', 'owner'],
 } as const satisfies Record<string, readonly Role[]>
 
 export type Action = keyof typeof matrix

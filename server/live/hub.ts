@@ -47,7 +47,7 @@ export interface LiveHub {
 const defaultLimits: LiveLimits = {
   helloMs: 5_000,
   heartbeatMs: 25_000,
-  frameMs: 200,
+  frameMs: 100,
   maxWaitingBytes: 256 * 1024,
   maxBehindMs: 30_000,
   maxMessages: 200,
@@ -64,6 +64,8 @@ interface Visitor {
   rooms: Map<string, Member>
   alive: boolean
   messages: number
+  /** Whether anybody can see it. */
+  visible: boolean
   /** Done when every message so far has been answered. */
   heard: Promise<void>
 }
@@ -107,6 +109,7 @@ export function createLiveHub(options: LiveHubOptions): LiveHub {
       rooms: new Map(),
       alive: true,
       messages: 0,
+      visible: true,
       heard: Promise.resolve(),
     }
     visitors.add(visitor)
@@ -144,6 +147,7 @@ export function createLiveHub(options: LiveHubOptions): LiveHub {
     else if (!visitor.person) visitor.socket.close(closeCodes.notSignedIn, 'Say hello with a ticket first.')
     else if (message.type === 'subscribe') await join(visitor, visitor.person, message.site)
     else if (message.type === 'unsubscribe') leave(visitor, message.site)
+    else if (message.type === 'attention') attend(visitor, message.visible)
     else refresh(visitor, message.site)
   }
 
@@ -170,6 +174,12 @@ export function createLiveHub(options: LiveHubOptions): LiveHub {
     const member = memberOf(visitor.socket)
     visitor.rooms.set(site, member)
     roomOf(site).join(member)
+    if (!visitor.visible) roomOf(site).attend(member, false)
+  }
+
+  function attend(visitor: Visitor, visible: boolean): void {
+    visitor.visible = visible
+    for (const [site, member] of visitor.rooms) rooms.get(site)?.attend(member, visible)
   }
 
   function leave(visitor: Visitor, site: string): void {

@@ -1,6 +1,7 @@
 import type { LiveChanges } from '#shared/contract/live.ts'
 import type { Tonight } from '#shared/contract/site.ts'
 import type { Clock } from '#shared/domain/clock.ts'
+import { createTitle } from './title.ts'
 import { createGatheredChanges } from './gathered-changes.ts'
 
 /** A socket as a room sees it. */
@@ -31,6 +32,8 @@ export interface RoomOptions {
 export interface Room {
   join(member: Member): void
   leave(member: Member): void
+  /** A member that nobody sees gets nothing but what changes its title; seen again, the whole state. */
+  attend(member: Member, visible: boolean): void
   /** Sends a member the whole state again. */
   refresh(member: Member): void
   add(changes: LiveChanges): void
@@ -40,8 +43,11 @@ export interface Room {
 
 /** Where a member stands. */
 interface Place {
-  /** `waiting` for a snapshot, with the frames that came meanwhile; `behind` until it has read what it was sent. */
-  state: 'live' | 'waiting' | 'behind'
+  /**
+   * `waiting` for a snapshot, with the frames that came meanwhile; `behind` until it has read what it was sent;
+   * `hidden` while nobody sees it.
+   */
+  state: 'live' | 'waiting' | 'behind' | 'hidden'
   frames: string[]
   behindMs: number
 }
@@ -58,6 +64,7 @@ export function createRoom(options: RoomOptions): Room {
   const { site, epoch, clock, snapshotOf, frameMs } = options
   const members = new Map<Member, Place>()
   const gathered = createGatheredChanges()
+  const title = createTitle(site, clock)
   let seq = 0
   let timer: NodeJS.Timeout | undefined
   let resting = false
@@ -67,6 +74,7 @@ export function createRoom(options: RoomOptions): Room {
   function add(changes: LiveChanges): void {
     // Nobody listens: whoever joins reads the state itself.
     if (members.size === 0) return
+    title.note(changes)
     gathered.add(changes)
     if (!resting && !gathered.isEmpty()) timer ??= setTimeout(sendFrame, gatherMs)
   }
@@ -79,11 +87,18 @@ export function createRoom(options: RoomOptions): Room {
       const frame = { type: 'delta', site, epoch, seq, sentAt: clock.now(), changes: gathered.take() }
       const text = JSON.stringify(frame)
       for (const [member, place] of members) deliver(member, place, text)
+      sendTitle()
       rest()
     } else if ([...members.values()].some(({ state }) => state === 'behind')) {
       for (const [member, place] of members) if (place.state === 'behind') lookAfter(member, place)
       rest()
     }
+  }
+
+  function sendTitle(): void {
+    const text = title.ifNew()
+    if (text === undefined) return
+    for (const [member, { state }] of members) if (state === 'hidden') member.send(text)
   }
 
   function rest(): void {
@@ -92,6 +107,7 @@ export function createRoom(options: RoomOptions): Room {
   }
 
   function deliver(member: Member, place: Place, text: string): void {
+    if (place.state === 'hidden') return
     if (place.state === 'waiting') place.frames.push(text)
     else if (place.state === 'behind') lookAfter(member, place)
     else if (member.waitingBytes() > options.maxWaitingBytes) {
@@ -108,7 +124,24 @@ export function createRoom(options: RoomOptions): Room {
   }
 
   function refresh(member: Member): void {
-    if (!members.has(member)) return
+    const place = members.get(member)
+    if (!place) return
+    if (place.state === 'hidden') {
+      // It asks whether anybody is there.
+      member.send(title.text())
+      return
+    }
+    askFor(member)
+  }
+
+  function attend(member: Member, visible: boolean): void {
+    const place = members.get(member)
+    if (!place || (place.state === 'hidden') === !visible) return
+    if (visible) askFor(member)
+    else members.set(member, { state: 'hidden', frames: [], behindMs: 0 })
+  }
+
+  function askFor(member: Member): void {
     members.set(member, { state: 'waiting', frames: [], behindMs: 0 })
     // Who comes while a snapshot is being read needs one that is read later; all of them share it.
     if (reading) readAgain = true
@@ -121,8 +154,10 @@ export function createRoom(options: RoomOptions): Room {
     const seqBefore = seq
     // What came while another snapshot was being read is older than this one.
     for (const [, place] of waiting) place.frames = []
+    title.beginRead()
     try {
       const tonight = await snapshotOf(site)
+      title.know(tonight)
       const text = JSON.stringify({ type: 'snapshot', site, epoch, seq: seqBefore, tonight })
       for (const [member, place] of waiting) if (members.get(member) === place) bringUp(member, place, text)
     } catch (error) {
@@ -151,6 +186,7 @@ export function createRoom(options: RoomOptions): Room {
       members.delete(member)
       if (members.size === 0) gathered.take()
     },
+    attend,
     refresh,
     add,
     size: () => members.size,

@@ -5,11 +5,12 @@ import type { CookEvent } from '@/shared/contract/event.ts'
 import type { LatestForecast } from '@/shared/contract/forecast.ts'
 import type { Piece } from '@/shared/contract/piece.ts'
 import type { Service, Site } from '@/shared/contract/site.ts'
+import type { NextStep } from '@/shared/domain/next-step.ts'
 
 /**
- * `connecting`: the first time, nothing is known yet. `live`: frames come in. `reconnecting`: the line was lost
- * and is being opened again, what is shown is the last that was heard. `refused`: the server does not let this
- * person see the site.
+ * `connecting`: the first time, nothing is known yet. `live`: frames come in. `reconnecting`: the line was lost,
+ * or could not be opened, and is being opened again; what is shown is the last that was heard. `refused`: the server
+ * does not let this person see the site.
  */
 export type ConnectionState = 'connecting' | 'live' | 'reconnecting' | 'refused'
 
@@ -66,6 +67,8 @@ export interface LiveSite {
   readonly tonight: ComputedRef<TonightState | null>
   /** By channel id; empty until loaded. */
   readonly traces: ComputedRef<ReadonlyMap<number, ChannelTrace>>
+  /** What is to be done next, for the page's title; also kept while nobody sees the page. */
+  readonly next: ComputedRef<NextStep | null>
   /** The server's present in milliseconds since 1970 UTC, moving once a second. */
   readonly now: Readonly<Ref<number>>
   /** How fresh a channel is at `now`; reactive when called in a template or computed. */
@@ -82,4 +85,5 @@ export interface LiveRoom {
   readonly connection: ShallowRef<ConnectionState>
   readonly tonight: ShallowRef<TonightState | null>
   readonly traces: ShallowRef<ReadonlyMap<number, ChannelTrace>>
+  readonly next: ShallowRef<NextStep | null>
 }

@@ -7,6 +7,7 @@ import { call } from '@/api/client.ts'
 import type { ReadingTuple, ServerMessage } from '@/shared/contract/live.ts'
 import { readingEndpoints } from '@/shared/contract/reading.ts'
 import { sessionEndpoints } from '@/shared/contract/session.ts'
+import { nextStep } from '@/shared/domain/next-step.ts'
 import { createLiveConnection } from './live-connection.ts'
 import { openSocket } from './open-socket.ts'
 import { freshness, gapMsOf } from './live-freshness.ts'
@@ -19,6 +20,8 @@ import { usePresent } from './present.ts'
 const lingerMs = 20_000
 /** Lines that could not be loaded are asked for again after this long. */
 const tracesAgainMs = 5000
+/** A page that is hidden for less than this is as good as seen. */
+const hiddenAfterMs = 10_000
 /** Half a minute a point over twelve hours. */
 const tracePoints = 1440
 
@@ -38,6 +41,9 @@ interface Room extends LiveRoom {
 export const useLiveStore = defineStore('live', () => {
   const present = usePresent()
   const rooms = new Map<string, Room>()
+  /** As the server knows it. */
+  let seen = true
+  let cancelHiding: () => void = () => undefined
 
   const connection = createLiveConnection(
     {
@@ -48,11 +54,12 @@ export const useLiveStore = defineStore('live', () => {
       later,
       onMessage: hear,
       onUp: () => {
+        if (!seen) connection.send({ type: 'attention', visible: false })
         for (const room of rooms.values()) subscribe(room)
       },
       onDown: () => {
         for (const room of rooms.values()) {
-          if (room.connection.value === 'live') room.connection.value = 'reconnecting'
+          if (room.connection.value !== 'refused') room.connection.value = 'reconnecting'
         }
       },
     },
@@ -65,8 +72,22 @@ export const useLiveStore = defineStore('live', () => {
   // A phone that wakes or finds the network again does not wait for its turn.
   useEventListener(window, 'online', () => rooms.size > 0 && connection.open())
   useEventListener(document, 'visibilitychange', () => {
-    if (document.visibilityState === 'visible' && rooms.size > 0) connection.open()
+    cancelHiding()
+    if (document.visibilityState === 'hidden') {
+      cancelHiding = later(() => attend(false), hiddenAfterMs)
+      return
+    }
+    attend(true)
+    if (rooms.size > 0) connection.open()
   })
+
+  /** Nobody sees the page, or somebody does again: then the server sends the state as it is by now. */
+  function attend(visible: boolean): void {
+    if (seen === visible) return
+    seen = visible
+    const told = connection.send({ type: 'attention', visible })
+    if (visible && told) for (const room of rooms.values()) room.awaiting = true
+  }
 
   function join(site: string): Room {
     const room = rooms.get(site) ?? newRoom(site)
@@ -98,6 +119,7 @@ export const useLiveStore = defineStore('live', () => {
       room.cancelLeave?.()
       room.tonight.value = null
       room.traces.value = new Map()
+      room.next.value = null
       room.place = null
       room.connection.value = 'connecting'
     }
@@ -114,6 +136,7 @@ export const useLiveStore = defineStore('live', () => {
     const room = message.site === undefined ? undefined : rooms.get(message.site)
     if (room === undefined) return
     if (message.type === 'refused') room.connection.value = 'refused'
+    else if (message.type === 'title') room.next.value = message.next
     else if (message.type === 'snapshot') takeSnapshot(room, message)
     else takeDelta(room, message)
   }
@@ -126,6 +149,7 @@ export const useLiveStore = defineStore('live', () => {
     room.awaiting = false
     room.tonight.value = tonightFrom(tonight, room.tonight.value)
     room.connection.value = 'live'
+    renewNext(room)
     if (!complete) void loadTraces(room)
   }
 
@@ -140,10 +164,16 @@ export const useLiveStore = defineStore('live', () => {
     present.learn(message.sentAt)
     room.place = { epoch: message.epoch, seq: message.seq }
     room.tonight.value = applyChanges(room.tonight.value, message.changes)
-    const { readings } = message.changes
+    const { readings, pieces, forecasts } = message.changes
+    if (pieces !== undefined || forecasts !== undefined) renewNext(room)
     if (readings === undefined) return
     room.meanwhile?.push(...readings)
     extend(room, readings)
+  }
+
+  function renewNext(room: Room): void {
+    const tonight = room.tonight.value
+    room.next.value = tonight && nextStep(tonight.pieces.values(), tonight.forecasts, present.now)
   }
 
   function extend(room: Room, readings: readonly ReadingTuple[]): void {
@@ -212,6 +242,7 @@ export function useLive(site: MaybeRefOrGetter<string>): LiveSite {
     connection: computed(() => room.value?.connection.value ?? 'connecting'),
     tonight,
     traces: computed(() => room.value?.traces.value ?? new Map()),
+    next: computed(() => room.value?.next.value ?? null),
     now: toRef(present, 'now'),
     freshnessOf,
     staleOf: (channelId) => freshnessOf(channelId).stale,
@@ -228,6 +259,7 @@ function newRoom(site: string): Room {
     connection: shallowRef('connecting'),
     tonight: shallowRef(null),
     traces: shallowRef(new Map()),
+    next: shallowRef(null),
     pages: 0,
     place: null,
     awaiting: false,

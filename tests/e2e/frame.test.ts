@@ -45,6 +45,34 @@ describe('the frame', () => {
     expect(refused).toBeGreaterThan(2)
   })
 
+  it('gets no frames while nobody sees it, and the state as it is once somebody does', async () => {
+    const { page } = await openPage(browser, night.url)
+    const heard: string[] = []
+    const said: string[] = []
+    page.on('websocket', (socket) => {
+      socket.on('framereceived', ({ payload }) => heard.push(payload.toString()))
+      socket.on('framesent', ({ payload }) => said.push(payload.toString()))
+    })
+    // Pages without a window are never hidden of themselves.
+    await page.addInitScript(`
+      window.shown = 'visible'
+      Object.defineProperty(document, 'visibilityState', { get: () => window.shown })`)
+    const show = (state: 'hidden' | 'visible') =>
+      page.evaluate(`window.shown = '${state}'; document.dispatchEvent(new Event('visibilitychange'))`)
+    await signIn(page, night.house.people.owner.email, '/quarry-road/tonight')
+    await night.report(118, 67)
+    await page.getByText('244 °F').first().waitFor()
+    await show('hidden')
+    await expect.poll(() => said.some((text) => text.includes('attention')), { timeout: 15_000 }).toBe(true)
+    const before = heard.length
+    await night.report(119, 67)
+    await night.report(121, 67)
+    expect(heard.slice(before).filter((text) => !text.includes('"title"'))).toEqual([])
+    expect(await page.getByText('250 °F').count()).toBe(0)
+    await show('visible')
+    await page.getByText('250 °F').first().waitFor()
+  })
+
   it('shows the next person nothing of what the one before was shown', async () => {
     const { page } = await openPage(browser, night.url)
     const sockets: { closed: boolean }[] = []

@@ -1,7 +1,10 @@
+import { randomUUID } from 'node:crypto'
 import { once } from 'node:events'
 import { afterAll, afterEach, beforeAll, describe, expect, test } from 'vitest'
 import { WebSocket } from 'ws'
 import { closeCodes } from '#shared/contract/live.ts'
+import { Piece } from '#shared/contract/piece.ts'
+import { systemClock } from '#shared/domain/clock.ts'
 import { startTestServer, type TestServer } from '../harness/server.ts'
 import { closing, openSocket, ticketFor, watchSite, type Watcher } from './watch-site.ts'
 
@@ -94,7 +97,7 @@ describe('a room', () => {
     expect(frame).toMatchObject({ site: 'quarry-road', changes: { readings: [[2, 2, 55]] } })
   })
 
-  test('counts its frames one by one after the snapshot, at most five a second', async () => {
+  test('counts its frames one by one after the snapshot, at most ten a second', async () => {
     const watcher = await watchSite(server)
     opened.push(watcher)
     const begin = performance.now()
@@ -109,8 +112,58 @@ describe('a room', () => {
     const numbers = watcher.messages.flatMap((message) => ('seq' in message ? [message.seq] : []))
     expect(numbers).toEqual(numbers.map((_, index) => (numbers[0] ?? 0) + index))
     const frames = watcher.messages.filter(({ type }) => type === 'delta').length
-    expect(frames).toBeGreaterThanOrEqual(4)
-    expect(frames).toBeLessThanOrEqual(7)
+    expect(frames).toBeGreaterThanOrEqual(6)
+    expect(frames).toBeLessThanOrEqual(12)
+  })
+
+  test('tells a page that nobody sees what changes its title, and nothing else', async () => {
+    const { bus, tonight } = server.server.services
+    const started = await server
+      .as('lead')
+      .post('/api/sites/quarry-road/pieces')
+      .send({
+        eventId: randomUUID(),
+        label: 'T1',
+        recipeId: server.house.recipes[0]?.id,
+        cookerId: server.house.own.cookers[0]?.id,
+        rawKg: 6,
+        onAt: new Date(systemClock.now()).toISOString(),
+      })
+      .expect(201)
+    const piece = Piece.parse(started.body)
+    const watcher = await watchSite(server)
+    opened.push(watcher)
+    watcher.send({ type: 'attention', visible: false })
+    // Answered after it, so that what follows is sent to a hidden page.
+    watcher.send({ type: 'snapshot', site: 'quarry-road' })
+    await watcher.until(({ type }) => type === 'title')
+    const before = watcher.messages.length
+    bus.publish('quarry-road', { readings: [[2, 2, 55]] })
+    await new Promise((resolve) => setTimeout(resolve, 400))
+    expect(watcher.messages.slice(before)).toEqual([])
+
+    const at = Math.ceil(systemClock.now() / 60_000) * 60_000 + 3_600_000
+    const reach = new Date(at).toISOString()
+    const times = { p10: reach, p25: reach, p50: reach, p75: reach, p90: reach }
+    bus.publish('quarry-road', {
+      forecasts: [
+        {
+          ...{ pieceId: piece.id, madeAt: piece.onAt ?? reach, phase: 'rise', fan: [], pullMovedMin: null },
+          ...{ wrap: times, wrapReason: null, wrapReachedAt: null, pull: times, pullReason: null },
+        },
+      ],
+    })
+    const title = await watcher.until((message) => message.type === 'title' && message.next !== null)
+    expect(title).toMatchObject({ next: { kind: 'wrap', subject: 'T1', at } })
+    expect(watcher.messages.slice(before).map(({ type }) => type)).toEqual(['title'])
+
+    watcher.send({ type: 'attention', visible: true })
+    await watcher.until(
+      (message) => watcher.messages.indexOf(message) > before && message.type === 'snapshot',
+    )
+    bus.publish('quarry-road', { readings: [[2, 3, 56]] })
+    await watcher.until((message) => message.type === 'delta' && message.changes.readings?.[0]?.[2] === 56)
+    expect((await tonight.ofSite('quarry-road')).pieces.map(({ id }) => id)).toContain(piece.id)
   })
 
   test('sends nothing when nothing changes, and nothing after leaving', async () => {

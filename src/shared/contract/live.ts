@@ -20,6 +20,8 @@ export const ClientMessage = z.discriminatedUnion('type', [
   z.strictObject({ type: z.literal('unsubscribe'), site: Slug }),
   /** Asked for when a sequence number was missed. */
   z.strictObject({ type: z.literal('snapshot'), site: Slug }),
+  /** Whether anybody can see the page. Hidden it gets nothing but what changes its title; seen again, a snapshot. */
+  z.strictObject({ type: z.literal('attention'), visible: z.boolean() }),
 ])
 export type ClientMessage = z.infer<typeof ClientMessage>
 
@@ -46,6 +48,14 @@ export const ServerMessage = z.discriminatedUnion('type', [
   z.object({ type: z.literal('welcome'), epoch: z.string() }),
   z.object({ type: z.literal('snapshot'), ...Place, tonight: Tonight }),
   z.object({ type: z.literal('delta'), ...Place, sentAt: z.number(), changes: LiveChanges }),
+  /** To a hidden page: what is to be done next, in ms since 1970 UTC. */
+  z.object({
+    type: z.literal('title'),
+    site: Slug,
+    next: z
+      .object({ kind: z.enum(['wrap', 'pull', 'rest', 'hold']), subject: z.string(), at: z.number() })
+      .nullable(),
+  }),
   z.object({ type: z.literal('refused'), site: Slug.optional(), reason: z.string() }),
 ])
 export type ServerMessage = z.infer<typeof ServerMessage>

@@ -1,3 +1,4 @@
+import { performance } from 'node:perf_hooks'
 import { createServer as createTcpServer, Socket } from 'node:net'
 import { createServer as createTlsServer } from 'node:tls'
 import type { Duplex } from 'node:stream'
@@ -91,6 +92,8 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
   const turns = createTurns(createTokenBucket(limits.connectsPerSecond, limits.connectBurst))
   /** Devices that have listened to their own topics; once is for ever, as a session may be kept. */
   const listeners = new Set<number>()
+  /** Devices that did not read what they had subscribed to: until when they may not subscribe again. */
+  const deafUntil = new Map<number, number>()
   const pressed = { all: false, large: false }
   /** Whose turn it is when there is room again. */
   let turn = 0
@@ -149,6 +152,9 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
       const connection = byStream.get(client.conn)
       if (!connection || !isOwnTopic(connection, packet.topic)) return null
       if (connection.gate.unreadBytes() <= limits.maxUnreadBytes) return packet
+      if (connection.device) {
+        deafUntil.set(connection.device.deviceId, performance.now() + limits.deafForMs)
+      }
       end(connection, 'not-reading')
       return null
     },
@@ -158,9 +164,11 @@ export async function createBroker(options: BrokerOptions): Promise<Broker> {
         done(new Error('the filter is not well-formed text'))
         return
       }
-      const own = connection !== undefined && isOwnFilter(connection, subscription.topic)
-      if (own && connection.device) listeners.add(connection.device.deviceId)
-      done(null, own ? subscription : null)
+      const device = connection && isOwnFilter(connection, subscription.topic) ? connection.device : undefined
+      // Sent megabytes again and again that nobody reads, it would cost the others their time.
+      const granted = device !== undefined && performance.now() >= (deafUntil.get(device.deviceId) ?? 0)
+      if (granted) listeners.add(device.deviceId)
+      done(null, granted ? subscription : null)
     },
   })
   aedes.on('clientReady', (client) => {

@@ -19,6 +19,8 @@ export interface BrokerLimits extends GateLimits {
   maxKeptBytes: number
   /** What may wait to be read by a device that has subscribed, in bytes; beyond it is cut off. */
   maxUnreadBytes: number
+  /** For so long its device may not subscribe again, in ms. */
+  deafForMs: number
   /** Sessions of one device that outlive their connections. */
   maxKeptSessions: number
   /** Messages, and their bytes, that wait for a session that is away. */
@@ -46,6 +48,7 @@ export const usualLimits: BrokerLimits = {
   maxClientIdBytes: 256,
   maxKeptBytes: 1024,
   maxUnreadBytes: 1024 * 1024,
+  deafForMs: 60_000,
   maxKeptSessions: 8,
   maxWaiting: 1000,
   maxWaitingBytes: 1024 * 1024,

@@ -71,7 +71,7 @@ const farewellMs = 5000
  */
 export function composeServer(deps: ServerDeps) {
   const { databaseUrl, log, clock, tokenKey, passwordCost, build } = deps
-  const db = openDatabase(databaseUrl, { answerWithinMs: 4_000 })
+  const db = openDatabase(databaseUrl)
   const ingestDb = openDatabase(databaseUrl, { max: 2 })
   let broker: Broker | undefined
   let jobs: Jobs | undefined
@@ -118,12 +118,10 @@ export function composeServer(deps: ServerDeps) {
   })
   const httpServer = createServer(app)
   const hub = createLiveHub({
-    httpServer,
     bus: services.bus,
     verifyTicket: services.tickets.redeem,
     snapshotOf: (site) => services.tonight.ofSite(site),
     mayView,
-    allowedOrigins: deps.publicUrl === undefined ? [] : [new URL(deps.publicUrl).origin],
     clock,
     log,
   })
@@ -138,11 +136,13 @@ export function composeServer(deps: ServerDeps) {
     },
   })
   const stopUpgrades = dispatchUpgrades(httpServer, {
-    handlers: new Map(deps.mqtt ? [[mqttPath, mqttSockets.upgrade]] : []),
-    // The hub listens for its own.
-    elsewhere: [livePath],
+    handlers: new Map([
+      [livePath, hub.upgrade],
+      ...(deps.mqtt ? ([[mqttPath, mqttSockets.upgrade]] as const) : []),
+    ]),
     allowedOrigins: deps.publicUrl === undefined ? [] : [new URL(deps.publicUrl).origin],
   })
+
   /** Asked anew each time: a socket stays open for weeks, a role may not. */
   async function mayView({ userId }: Person, siteSlug: string): Promise<boolean> {
     const [person, site] = await Promise.all([

@@ -3,7 +3,7 @@ import { z } from 'zod'
 /**
  * Whether an error says that the database cannot be reached just now, rather than that a statement was wrong:
  * PostgreSQL's SQLSTATE classes 08 (connection), 53300 (too many connections) and 57P01 to 57P03 (shutting down or
- * starting), a socket's own codes, the driver's broken connection and its and the pool's time-outs. Knex
+ * starting), a socket's own codes, the driver's broken connection and the pool's time-out. Knex
  * puts the statement and a dash before the driver's words.
  */
 export function isDatabaseAway(error: unknown): boolean {
@@ -14,7 +14,7 @@ export function isDatabaseAway(error: unknown): boolean {
     /^(08...|53300|57P0[123])$/.test(code) ||
     socketCodes.has(code) ||
     name === 'KnexTimeoutError' ||
-    /(?:^| - )(?:Query read timeout|Connection terminated|Client has encountered a connection error|timeout exceeded when trying to connect)/.test(
+    /(?:^| - )(?:Connection terminated|Client has encountered a connection error|timeout exceeded when trying to connect)/.test(
       message,
     )
   )

@@ -8,19 +8,11 @@ pg.types.setTypeParser(pg.types.builtins.INT8, Number)
 
 const ignore = () => undefined
 
-/**
- * Opens a pool. Whoever opens it calls `destroy()`.
- *
- * @param options `answerWithinMs`: a statement that takes longer fails, also when the database is frozen and says nothing
- */
-export function openDatabase(url: string, options: { max?: number; answerWithinMs?: number } = {}): Knex {
+/** Opens a pool. Whoever opens it calls `destroy()`. */
+export function openDatabase(url: string, options: { max?: number } = {}): Knex {
   return knex({
     client: 'pg',
-    connection: {
-      connectionString: url,
-      application_name: 'coalhand',
-      ...(options.answerWithinMs !== undefined && { query_timeout: options.answerWithinMs }),
-    },
+    connection: { connectionString: url, application_name: 'coalhand' },
     pool: { min: 2, max: options.max ?? 12, idleTimeoutMillis: 60_000 },
     acquireConnectionTimeout: 5_000,
     // Knex writes to the console what its callers are told as errors anyway, once a connection that fails.

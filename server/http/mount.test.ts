@@ -86,7 +86,7 @@ beforeEach(() => {
   lines.length = 0
   const app = express()
   const router = Router()
-  mount = createMount(router, guard, { checkAnswers: true })
+  mount = createMount(router, guard, { checkAnswers: true, patienceMs: 400 })
   app.use(express.json(), router, errorHandler(log))
   api = supertest(app)
 })
@@ -121,6 +121,20 @@ describe('who asks', () => {
     const refused = await api.post('/things').set('Authorization', 'Bearer lead').expect(401)
     expect(refused.get('WWW-Authenticate')).toBe('Basic realm="Coalhand devices", charset="UTF-8"')
   })
+})
+
+it('is told in time that an answer takes too long; what comes late is left', async () => {
+  let done: Promise<void> | undefined
+  mount(send, ({ response }) => {
+    done = new Promise((resolve) => setTimeout(resolve, 600)).then(() => {
+      response.set('X-Late', 'yes')
+    })
+    return done.then(() => ({ from: 'too late' }))
+  })
+  const response = await api.post('/things').set('Authorization', 'Basic box').expect(503)
+  expect(response.type).toBe('application/problem+json')
+  await expect(done).rejects.toThrow(/after they are sent/)
+  expect(lines.filter((line) => line.startsWith('error'))).toEqual([])
 })
 
 describe('what was sent', () => {

@@ -12,7 +12,8 @@ import type {
 } from '#shared/contract/endpoint.ts'
 import { may, type Role } from '#shared/domain/permissions.ts'
 import { parseInput } from './parse-input.ts'
-import { badRequest, forbidden, notFound, unauthorized, versionRequired } from './problem.ts'
+import { badRequest, forbidden, notFound, unauthorized, unavailable, versionRequired } from './problem.ts'
+import { within } from './within.ts'
 
 /** A person who is signed in, with the roles held at each site. */
 export interface Person {
@@ -79,14 +80,23 @@ export type Mount = <
   handler: (call: Call<P, Q, B, A>) => Promise<z.input<R>> | z.input<R>,
 ) => void
 
+/** A database that is frozen says nothing, for as long as it is: nobody waits for it longer than this, in ms. */
+const usualPatienceMs = 5000
+
 /**
  * Makes the mounter of a router. Every route goes the same way: who asks (401, 404, 403), what was sent (400, 428),
  * the handler, the reply. What any of them throws goes to the error handler; nothing is caught here.
+ * @param options.patienceMs how long an answer may take (503)
  * @param options.checkAnswers compare each answer with the contract, so that a break shows as an error (not in production)
  */
-export function createMount(router: Router, guard: Guard, options: { checkAnswers?: boolean } = {}): Mount {
+export function createMount(
+  router: Router,
+  guard: Guard,
+  options: { checkAnswers?: boolean; patienceMs?: number } = {},
+): Mount {
+  const patienceMs = options.patienceMs ?? usualPatienceMs
   return (endpoint, handler) => {
-    router[endpoint.method](endpoint.path, async (request, response) => {
+    const answerTo = async (request: Request, response: Response) => {
       const who = await identify(endpoint.access, guard, request, response)
       const input = {
         params: parseInput('path', endpoint.params, request.params),
@@ -100,9 +110,18 @@ export function createMount(router: Router, guard: Guard, options: { checkAnswer
       // `identify` gives what the access kind promises; the compiler cannot follow a conditional type over a value.
       const answer = await handler(call as typeof call & Who<typeof endpoint.access>)
       if (options.checkAnswers) checkAnswer(endpoint, answer)
-      reply(endpoint, answer, response)
+      return answer
+    }
+    router[endpoint.method](endpoint.path, async (request, response) => {
+      reply(endpoint, await within(patienceMs, answerTo(request, response), tooLate), response)
     })
   }
+}
+
+function tooLate(): Error {
+  return unavailable(
+    'The server could not answer in time. What you asked for may still be done: look before you ask again.',
+  )
 }
 
 /** Who asks, or the refusal. A thing at a site where the person has no role is answered like one that is not there. */

@@ -7,8 +7,6 @@ export type UpgradeHandler = (request: IncomingMessage, socket: Duplex, head: Bu
 export interface UpgradeOptions {
   /** Who answers, by path. */
   handlers: ReadonlyMap<string, UpgradeHandler>
-  /** Paths that listeners of their own answer. */
-  elsewhere: readonly string[]
   /** Pages of these origins may connect; those of the server's own address always may. */
   allowedOrigins: readonly string[]
 }
@@ -20,15 +18,14 @@ export interface UpgradeOptions {
  */
 export function dispatchUpgrades(
   httpServer: Server,
-  { handlers, elsewhere, allowedOrigins }: UpgradeOptions,
+  { handlers, allowedOrigins }: UpgradeOptions,
 ): () => void {
   const dispatch: UpgradeHandler = (request, socket, head) => {
     const path = request.url?.split('?')[0] ?? ''
     const handler = handlers.get(path)
-    if (handler) {
-      if (mayConnect(request, allowedOrigins)) handler(request, socket, head)
-      else turnAway(socket, '403 Forbidden')
-    } else if (!elsewhere.includes(path)) turnAway(socket, '404 Not Found')
+    if (!handler) turnAway(socket, '404 Not Found')
+    else if (mayConnect(request, allowedOrigins)) handler(request, socket, head)
+    else turnAway(socket, '403 Forbidden')
   }
   httpServer.on('upgrade', dispatch)
   return () => httpServer.off('upgrade', dispatch)
@@ -51,7 +48,8 @@ function mayConnect({ headers }: IncomingMessage, allowedOrigins: readonly strin
   return URL.canParse(origin) && new URL(origin).host === host
 }
 
-function turnAway(socket: Duplex, status: string): void {
+/** Answers an upgrade request with a status of HTTP instead. */
+export function turnAway(socket: Duplex, status: string): void {
   socket.on('error', () => undefined)
   socket.end(`HTTP/1.1 ${status}\r\nConnection: close\r\nContent-Length: 0\r\n\r\n`)
 }

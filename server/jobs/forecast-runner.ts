@@ -19,33 +19,10 @@ export interface RunnerDeps {
 
 export type ForecastRunner = ReturnType<typeof createForecastRunner>
 
-/** Forecasts pieces and keeps what was said. A piece is never forecast twice at once. */
+/** Forecasts pieces and keeps what was said. That a piece is never forecast twice at once, the queue sees to. */
 export function createForecastRunner({ clock, cooks, forecasts, pool, house, publish }: RunnerDeps) {
-  const running = new Map<number, Promise<void>>()
-  const again = new Set<number>()
-
-  /**
-   * Forecasts a piece now; if that is being done already, once more after it.
-   * @throws what stood in the way
-   */
-  function run(pieceId: number): Promise<void> {
-    const present = running.get(pieceId)
-    if (present) {
-      again.add(pieceId)
-      return present
-    }
-    const done = repeat(pieceId).finally(() => running.delete(pieceId))
-    running.set(pieceId, done)
-    return done
-  }
-
-  async function repeat(pieceId: number): Promise<void> {
-    again.delete(pieceId)
-    await forecastPiece(pieceId)
-    if (again.has(pieceId)) await repeat(pieceId)
-  }
-
-  async function forecastPiece(pieceId: number): Promise<void> {
+  /** @throws what stood in the way */
+  async function run(pieceId: number): Promise<void> {
     const record = await cooks.recordOf(pieceId)
     if (!record) return
     const madeAt = clock.now()

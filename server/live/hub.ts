@@ -1,26 +1,21 @@
 import { randomUUID } from 'node:crypto'
-import type { IncomingMessage, Server } from 'node:http'
-import type { Duplex } from 'node:stream'
 import type { Logger } from 'pino'
 import { WebSocket, WebSocketServer, type RawData } from 'ws'
-import { ClientMessage, closeCodes, livePath, type ServerMessage } from '#shared/contract/live.ts'
+import { ClientMessage, closeCodes, type ServerMessage } from '#shared/contract/live.ts'
 import type { Tonight } from '#shared/contract/site.ts'
 import type { Clock } from '#shared/domain/clock.ts'
 import type { Person } from '../http/mount.ts'
+import { turnAway, type UpgradeHandler } from '../http/upgrades.ts'
 import type { LiveBus } from './bus.ts'
 import { createRoom, type Member, type Room } from './room.ts'
 
 export interface LiveHubOptions {
-  httpServer: Server
-  path?: string
   bus: LiveBus
   /** The person of a ticket, which is then used up. */
   verifyTicket: (ticket: string) => Promise<Person | undefined> | Person | undefined
   snapshotOf: (siteSlug: string) => Promise<Tonight>
   /** Whether a person may look into a site's room, as things stand now. */
   mayView: (person: Person, siteSlug: string) => Promise<boolean> | boolean
-  /** Pages of these origins may connect; those of the server's own address always may. */
-  allowedOrigins?: readonly string[]
   /** Real time. */
   clock: Clock
   log: Logger
@@ -40,6 +35,8 @@ export interface LiveLimits {
 
 export interface LiveHub {
   connections: () => number
+  /** Answers a request for the WebSocket. */
+  upgrade: UpgradeHandler
   /** Tells everyone to come back later, and closes. */
   stop: () => Promise<void>
 }
@@ -72,7 +69,7 @@ interface Visitor {
 
 /** The WebSocket side of the product: tickets at the door, one room a site, one frame a tick. */
 export function createLiveHub(options: LiveHubOptions): LiveHub {
-  const { httpServer, bus, clock, log, path = livePath } = options
+  const { bus, clock, log } = options
   const limits = { ...defaultLimits, ...options.limits }
   const epoch = randomUUID()
   const rooms = new Map<string, Room>()
@@ -81,25 +78,10 @@ export function createLiveHub(options: LiveHubOptions): LiveHub {
 
   const unsubscribe = bus.subscribe((site, changes) => rooms.get(site)?.add(changes))
   const heartbeat = setInterval(() => void beat(), limits.heartbeatMs)
-  httpServer.on('upgrade', upgrade)
 
-  function upgrade(request: IncomingMessage, socket: Duplex, head: Buffer): void {
-    if (pathOf(request) !== path) {
-      // Another path's listener may want it; nobody else means that nobody will answer.
-      if (httpServer.listenerCount('upgrade') === 1) turnAway(socket, '404 Not Found')
-    } else if (!mayConnect(request)) turnAway(socket, '403 Forbidden')
-    else if (visitors.size >= limits.maxConnections) turnAway(socket, '503 Service Unavailable')
+  const upgrade: UpgradeHandler = (request, socket, head) => {
+    if (visitors.size >= limits.maxConnections) turnAway(socket, '503 Service Unavailable')
     else sockets.handleUpgrade(request, socket, head, greet)
-  }
-
-  /** A page of another origin must not open sockets with what a visitor's browser can reach (RFC 6455, 10.2). */
-  function mayConnect({ headers }: IncomingMessage): boolean {
-    const { origin, host } = headers
-    if (origin === undefined) return true
-    return (
-      options.allowedOrigins?.includes(origin) === true ||
-      (URL.canParse(origin) && new URL(origin).host === host)
-    )
   }
 
   function greet(socket: WebSocket): void {
@@ -242,10 +224,10 @@ export function createLiveHub(options: LiveHubOptions): LiveHub {
 
   return {
     connections: () => visitors.size,
+    upgrade,
     stop: async () => {
       clearInterval(heartbeat)
       unsubscribe()
-      httpServer.off('upgrade', upgrade)
       const closed = [...visitors].map(({ socket }) => closeWell(socket))
       await Promise.all(closed)
       for (const room of rooms.values()) room.close()
@@ -280,15 +262,6 @@ function readMessage(data: RawData): ClientMessage | undefined {
   } catch {
     return undefined
   }
-}
-
-function pathOf(request: IncomingMessage): string {
-  return request.url?.split('?')[0] ?? ''
-}
-
-function turnAway(socket: Duplex, status: string): void {
-  socket.on('error', () => undefined)
-  socket.end(`HTTP/1.1 ${status}\r\nConnection: close\r\nContent-Length: 0\r\n\r\n`)
 }
 
 /** Says that the server goes, and does not wait long for the answer. */

@@ -142,6 +142,13 @@ export function createRoom(options: RoomOptions): Room {
   }
 
   function askFor(member: Member): void {
+    if (member.waitingBytes() > options.maxWaitingBytes) {
+      // It has not read what it was sent: another snapshot on top would only fill the memory.
+      if (members.get(member)?.state !== 'behind')
+        members.set(member, { state: 'behind', frames: [], behindMs: 0 })
+      if (timer === undefined) rest()
+      return
+    }
     members.set(member, { state: 'waiting', frames: [], behindMs: 0 })
     // Who comes while a snapshot is being read needs one that is read later; all of them share it.
     if (reading) readAgain = true

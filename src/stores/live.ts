@@ -71,7 +71,7 @@ export const useLiveStore = defineStore('live', () => {
 
   // A phone that wakes or finds the network again does not wait for its turn.
   useEventListener(window, 'online', () => rooms.size > 0 && connection.open())
-  useEventListener(document, 'visibilitychange', () => {
+  const lookWhetherSeen = () => {
     cancelHiding()
     if (document.visibilityState === 'hidden') {
       cancelHiding = later(() => attend(false), hiddenAfterMs)
@@ -79,7 +79,10 @@ export const useLiveStore = defineStore('live', () => {
     }
     attend(true)
     if (rooms.size > 0) connection.open()
-  })
+  }
+  useEventListener(document, 'visibilitychange', lookWhetherSeen)
+  // It may have been opened behind another.
+  lookWhetherSeen()
 
   /** Nobody sees the page, or somebody does again: then the server sends the state as it is by now. */
   function attend(visible: boolean): void {

@@ -28,6 +28,30 @@ async function publishes(wire: Wire, box: Box, text: string, messageId = 1): Pro
   expect(await wire.next()).toMatchObject({ cmd: 'puback', messageId })
 }
 
+test('a device that did not read what it subscribed to may not subscribe for a while; another may', async () => {
+  // Nothing at all may wait, so that the first message is too much.
+  const broker = await start({ maxUnreadBytes: -1, deafForMs: 800 })
+  const box = broker.newBox()
+  const deaf = await broker.watch(box, box.status)
+  const sender = await broker.connect(box, { clientId: 'sender' })
+  await publishes(sender, box, 'stored, and not sent on')
+  sender.send(publishPacket(box.status, 'online', { qos: 1, messageId: 2 }))
+  expect(await deaf.rest()).toEqual([])
+
+  const back = await broker.connect(box, { clientId: 'watcher' })
+  back.send(subscribePacket(1, [box.status, 0]))
+  expect(await back.next()).toMatchObject({ cmd: 'suback', granted: [128] })
+  const other = broker.newBox()
+  await (await broker.watch(other, other.status)).cut()
+  await eventually(
+    async () => {
+      back.send(subscribePacket(2, [box.status, 0]))
+      return back.next()
+    },
+    (packet) => packet.cmd === 'suback' && packet.granted[0] === 0,
+  )
+})
+
 describe('connections', () => {
   test('more than may be: the next one is turned away, those that are there stay', async () => {
     const broker = await start({ maxConnections: 2 })

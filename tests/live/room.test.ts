@@ -173,6 +173,24 @@ describe('a member that reads too slowly', () => {
     room.close()
   })
 
+  test('gets no snapshot on top of what it has not read, however often it asks', async () => {
+    const { room, reads } = makeRoom({ maxWaitingBytes: 300 })
+    const deaf = makeMember()
+    room.join(deaf.member)
+    await eventually(deaf.messages, (messages) => messages.length === 1)
+    deaf.stick()
+    for (let index = 0; index < 30; index++) {
+      room.refresh(deaf.member)
+      await new Promise((resolve) => setTimeout(resolve, 5))
+    }
+    expect(deaf.messages().length).toBeLessThan(5)
+    const before = reads()
+    deaf.drain()
+    // It is looked after without a change in the room.
+    await eventually(reads, (count) => count === before + 1)
+    room.close()
+  })
+
   test('is given up when it never reads again, although nothing more changes', async () => {
     const { room, change } = makeRoom({ maxWaitingBytes: 300, maxBehindMs: 100 })
     const dead = makeMember()

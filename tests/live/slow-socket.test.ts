@@ -7,6 +7,7 @@ import { WebSocket } from 'ws'
 import { z } from 'zod'
 import { closeCodes, livePath, ServerMessage } from '#shared/contract/live.ts'
 import { systemClock } from '#shared/domain/clock.ts'
+import { dispatchUpgrades } from '../../server/http/upgrades.ts'
 import { createLiveBus, type LiveBus } from '../../server/live/bus.ts'
 import { createLiveHub, type LiveHub } from '../../server/live/hub.ts'
 import { eventually } from '../broker/devices.ts'
@@ -19,7 +20,6 @@ let port: number
 beforeAll(async () => {
   bus = createLiveBus()
   hub = createLiveHub({
-    httpServer: http,
     bus,
     verifyTicket: () => ({ userId: 1, name: 'Somebody', rolesBySite: new Map() }),
     mayView: () => true,
@@ -38,6 +38,7 @@ beforeAll(async () => {
     log: pino({ level: 'silent' }),
     limits: { frameMs: 40, heartbeatMs: 1500, maxWaitingBytes: 512 * 1024, maxBehindMs: 400 },
   })
+  dispatchUpgrades(http, { handlers: new Map([[livePath, hub.upgrade]]), allowedOrigins: [] })
   http.listen(0, '127.0.0.1')
   await once(http, 'listening')
   port = z.object({ port: z.number() }).parse(http.address()).port

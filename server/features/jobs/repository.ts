@@ -255,6 +255,6 @@ async function patiently<T extends z.ZodType>(
   sql: string,
   values: Knex.RawBinding[],
 ): Promise<z.output<T>[]> {
-  const answer: unknown = await db.raw(sql, values).timeout(patienceMs, { cancel: true })
+  const answer: unknown = await db.raw(sql, values).timeout(patienceMs)
   return z.object({ rows: z.array(row) }).parse(answer).rows
 }

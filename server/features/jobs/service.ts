@@ -5,6 +5,7 @@ import type { Clock } from '#shared/domain/clock.ts'
 import { jobKinds, jobTurns, nextTurn, type JobKind } from '#shared/domain/job-schedule.ts'
 import type { Person } from '../../http/mount.ts'
 import { notFound } from '../../http/problem.ts'
+import { within } from '../../http/within.ts'
 import { jobsRepository, type HeldJobs, type RanJobs } from './repository.ts'
 
 export { jobsRepository, type RunsToKeep } from './repository.ts'
@@ -87,7 +88,7 @@ export function createJobsService({ db, clock, toForecast }: JobsServiceDeps) {
         const [held, ran, pieces] = await Promise.all([
           repository.held(patienceMs),
           repository.ran(patienceMs),
-          within(patienceMs, toForecast()),
+          within(patienceMs, toForecast(), () => new Error('Too late.')),
         ])
         return { forecast: forecastHealth(held, ran, pieces.length), jobs: jobsHealth(held, ran) }
       } catch {
@@ -152,12 +153,4 @@ function jobsHealth(held: readonly HeldJobs[], ran: readonly RanJobs[]): Health[
       : 'all done in time'
   const failedLastHour = sum(ran.map((one) => one.failedLastHour))
   return { ok: !isLate && failing === 0, detail, waiting, oldestWaitingS, failing, failedLastHour }
-}
-
-function within<T>(ms: number, answer: Promise<T>): Promise<T> {
-  let timer: NodeJS.Timeout | undefined
-  const late = new Promise<never>((_, reject) => {
-    timer = setTimeout(() => reject(new Error('Too late.')), ms)
-  })
-  return Promise.race([answer, late]).finally(() => clearTimeout(timer))
 }

@@ -59,7 +59,7 @@ async function holdAllConnections(url: string) {
   if (!first) throw new Error('There was no connection to take.')
   const evict = () =>
     clients[0]?.query(
-      `select pg_terminate_backend(pid) from pg_stat_activity where application_name = 'coalhand' and pid <> pg_backend_pid()`,
+      `select pg_terminate_backend(pid) from pg_stat_activity where application_name like 'coalhand%' and pid <> pg_backend_pid()`,
     )
   while (await take());
   await evict()

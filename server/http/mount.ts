@@ -113,12 +113,12 @@ export function createMount(
       return answer
     }
     router[endpoint.method](endpoint.path, async (request, response) => {
-      reply(endpoint, await within(patienceMs, answerTo(request, response), tooLate), response)
+      reply(endpoint, await within(patienceMs, answerTo(request, response), noAnswerInTime), response)
     })
   }
 }
 
-function tooLate(): Error {
+function noAnswerInTime(): Error {
   return unavailable(
     'The server could not answer in time. What you asked for may still be done: look before you ask again.',
   )

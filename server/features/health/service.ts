@@ -2,6 +2,7 @@ import type { Knex } from 'knex'
 import { z } from 'zod'
 import type { Health } from '#shared/contract/health.ts'
 import type { Clock } from '#shared/domain/clock.ts'
+import { tooLate, within } from '../../http/within.ts'
 
 /** What the parts of the server say about themselves, asked anew each time. */
 export interface HealthSources {
@@ -37,8 +38,6 @@ export function createHealthService({ db, clock, build, sources }: HealthDeps) {
           select last_at from readings_1m where channel_id = channels.id order by minute desc limit 1) newest`,
       )
       .max({ newest: 'newest.last_at' })
-      // Cancelling would take a connection more, which a database that does not answer does not give.
-      .timeout(patienceMs)
     const [row] = z.tuple([NewestRow]).parse(rows)
     return row.newest?.toISOString() ?? null
   }
@@ -48,7 +47,7 @@ export function createHealthService({ db, clock, build, sources }: HealthDeps) {
     async health(): Promise<Health> {
       const begun = clock.now()
       const [database, work] = await Promise.all([
-        newestReading().then(
+        within(patienceMs, newestReading(), tooLate).then(
           (newest) => ({ ok: true, detail: `answers in ${clock.now() - begun} ms`, newest }),
           () => ({ ok: false, detail: 'does not answer', newest: null }),
         ),

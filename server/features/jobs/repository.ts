@@ -1,6 +1,7 @@
 import type { Knex } from 'knex'
 import { z } from 'zod'
 import { jobKinds, type JobKind } from '#shared/domain/job-schedule.ts'
+import { tooLate, within } from '../../http/within.ts'
 
 // The queue's own tables are its package's, and private by name; its version is pinned, and the public view lacks what
 // a job is about.
@@ -255,6 +256,6 @@ async function patiently<T extends z.ZodType>(
   sql: string,
   values: Knex.RawBinding[],
 ): Promise<z.output<T>[]> {
-  const answer: unknown = await db.raw(sql, values).timeout(patienceMs)
-  return z.object({ rows: z.array(row) }).parse(answer).rows
+  const query = async (): Promise<unknown> => db.raw(sql, values)
+  return z.object({ rows: z.array(row) }).parse(await within(patienceMs, query(), tooLate)).rows
 }

@@ -5,7 +5,7 @@ import type { Clock } from '#shared/domain/clock.ts'
 import { jobKinds, jobTurns, nextTurn, type JobKind } from '#shared/domain/job-schedule.ts'
 import type { Person } from '../../http/mount.ts'
 import { notFound } from '../../http/problem.ts'
-import { within } from '../../http/within.ts'
+import { tooLate, within } from '../../http/within.ts'
 import { jobsRepository, type HeldJobs, type RanJobs } from './repository.ts'
 
 export { jobsRepository, type RunsToKeep } from './repository.ts'
@@ -88,7 +88,7 @@ export function createJobsService({ db, clock, toForecast }: JobsServiceDeps) {
         const [held, ran, pieces] = await Promise.all([
           repository.held(patienceMs),
           repository.ran(patienceMs),
-          within(patienceMs, toForecast(), () => new Error('Too late.')),
+          within(patienceMs, toForecast(), tooLate),
         ])
         return { forecast: forecastHealth(held, ran, pieces.length), jobs: jobsHealth(held, ran) }
       } catch {

@@ -140,7 +140,7 @@ export function jobsRepository(db: Knex) {
            count(*) filter (where due) as waiting,
            max(extract(epoch from now() - run_at)) filter (where due)::float8 as "oldestWaitingS",
            count(*) filter (where locked_at is not null) as running,
-           count(*) filter (where last_error is not null) as failing
+           count(*) filter (where ${isFailing}) as failing
          from (select *, locked_at is null and attempts < max_attempts and run_at <= now() as due from ${jobs}) jobs
          join ${tasks} tasks on tasks.id = jobs.task_id
          where tasks.identifier in (${known}) group by 1`,
@@ -175,7 +175,7 @@ export function jobsRepository(db: Knex) {
          from ${jobs} jobs join ${tasks} tasks on tasks.id = jobs.task_id
          left join pieces on pieces.id = (jobs.payload->>'pieceId')::int
          left join sites on sites.id = pieces.site_id
-         where jobs.last_error is not null and tasks.identifier in (${known})
+         where ${isFailing} and tasks.identifier in (${known})
          order by "failedAt" desc limit ?`,
         [...jobKinds, limit],
       ),
@@ -184,8 +184,8 @@ export function jobsRepository(db: Knex) {
     async retry(jobId: number): Promise<boolean> {
       const found = await rowsOf(
         z.object({}),
-        `update ${jobs} set run_at = now(), attempts = 0, updated_at = now()
-         where id = ? and last_error is not null and locked_at is null returning id`,
+        `update ${jobs} jobs set run_at = now(), attempts = 0, updated_at = now()
+         where id = ? and ${isFailing} and locked_at is null returning id`,
         [jobId],
       )
       if (found.length > 0) await db.raw(`select pg_notify('jobs:insert', '{"count":1}')`)
@@ -196,7 +196,7 @@ export function jobsRepository(db: Knex) {
     async strike(jobId: number): Promise<boolean> {
       const found = await rowsOf(
         z.object({}),
-        `delete from ${jobs} where id = ? and last_error is not null and locked_at is null returning id`,
+        `delete from ${jobs} jobs where id = ? and ${isFailing} and locked_at is null returning id`,
         [jobId],
       )
       return found.length > 0
@@ -236,11 +236,14 @@ export function jobsRepository(db: Knex) {
       )
       await db.raw(
         `delete from ${jobs} where attempts >= max_attempts and locked_at is null
-           and (last_error is null or run_at < now() - interval '7 days')`,
+           and (key is null or last_error is null or run_at < now() - interval '7 days')`,
       )
     },
   }
 }
+
+/** The queue takes its key from a job that is asked for anew while it runs: what becomes of it then is nobody's concern. */
+const isFailing = 'jobs.last_error is not null and jobs.key is not null'
 
 /** The queue notes when a failed job is due again: after exp(attempts) seconds, of at most ten attempts. */
 const failedAt = 'least(now(), jobs.run_at - make_interval(secs => exp(least(jobs.attempts, 10))))'

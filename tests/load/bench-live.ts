@@ -25,11 +25,7 @@ const { values } = parseArgs({
 const measureMs = Number(values.seconds) * 1000
 const pages = Number(values.pages)
 
-const Hub = z.object({
-  httpPort: z.int(),
-  mqttPort: z.int().optional(),
-  tickets: z.array(z.string()).optional(),
-})
+const Hub = z.object({ httpPort: z.int(), mqttPort: z.int().optional() })
 const Seen = z.object({
   bytes: z.number(),
   frames: z.number(),
@@ -65,12 +61,12 @@ async function measure(): Promise<boolean> {
   await db('site_roles').insert({ user_id: userId, site_id: siteId, role: 'crew' })
   await db.destroy()
 
-  const server = run('hub-process.ts', { databaseUrl: postgres.url, userId, siteId, pages: pages + 1 })
+  const server = run('hub-process.ts', { databaseUrl: postgres.url, userId, siteId })
   const hub = Hub.parse(JSON.parse(await nextLine(server)))
   const stopDevices = await startDevices(devices, hub.mqttPort ?? 0)
   // Both with a watcher in the room, so that what one page costs at any rate is no part of the difference.
-  const alone = await watched(server, hub.httpPort, 1, hub.tickets?.slice(0, 1) ?? [])
-  const full = await watched(server, hub.httpPort, pages, hub.tickets?.slice(1) ?? [])
+  const alone = await watched(server, hub.httpPort, 1, await ticketsFor(server, 1))
+  const full = await watched(server, hub.httpPort, pages, await ticketsFor(server, pages))
   await stopDevices()
   await end(server)
 
@@ -101,6 +97,11 @@ async function measure(): Promise<boolean> {
   ]
   for (const floor of missed) console.log(`Floor missed: ${floor}`)
   return missed.length === 0
+}
+
+async function ticketsFor(server: ChildProcess, count: number): Promise<string[]> {
+  server.stdin?.write(`${count}\n`)
+  return z.array(z.string()).parse(JSON.parse(await nextLine(server)))
 }
 
 /** Lets pages watch, and counts what the server's process has had of a core meanwhile. */
@@ -164,7 +165,7 @@ function run(file: string, options: unknown): ChildProcess {
   const child = spawn(
     process.execPath,
     ['--import', 'tsx', `tests/load/live/${file}`, JSON.stringify(options)],
-    { stdio: ['ignore', 'pipe', 'inherit'] },
+    { stdio: ['pipe', 'pipe', 'inherit'] },
   )
   outputs.set(child, createInterface({ input: child.stdout })[Symbol.asyncIterator]())
   return child

@@ -1,12 +1,13 @@
 // The server of the live benchmark, in a process of its own: it takes readings by MQTT and shows them to pages. Its
-// first line says where, with a ticket for each page that will come.
+// first line says where; for each number that it reads it prints so many tickets, which are good for half a minute.
+import { createInterface } from 'node:readline'
 import { z } from 'zod'
 import { pino } from 'pino'
 import { systemClock } from '#shared/domain/clock.ts'
 import { composeServer } from '../../../server/compose.ts'
 
-const { databaseUrl, userId, siteId, pages } = z
-  .object({ databaseUrl: z.string(), userId: z.int(), siteId: z.int(), pages: z.int() })
+const { databaseUrl, userId, siteId } = z
+  .object({ databaseUrl: z.string(), userId: z.int(), siteId: z.int() })
   .parse(JSON.parse(process.argv[2] ?? ''))
 
 const server = composeServer({
@@ -20,8 +21,11 @@ const server = composeServer({
 })
 const { httpPort, mqttPort } = await server.start()
 const person = { userId, name: 'Page', rolesBySite: new Map([[siteId, ['crew' as const]]]) }
-const tickets = Array.from({ length: pages }, () => server.services.tickets.issue(person))
-console.log(JSON.stringify({ httpPort, mqttPort, tickets }))
+console.log(JSON.stringify({ httpPort, mqttPort }))
+createInterface({ input: process.stdin }).on('line', (count) => {
+  const tickets = Array.from({ length: Number(count) }, () => server.services.tickets.issue(person))
+  console.log(JSON.stringify(tickets))
+})
 process.on('SIGTERM', () => {
   void server.stop().then(() => process.exit(0))
 })
